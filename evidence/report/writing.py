@@ -1,0 +1,189 @@
+"""Saving a result: the form by the suffix, and either the whole file or none."""
+
+from __future__ import annotations
+
+import contextlib
+import os
+import secrets
+import shutil
+from collections.abc import Callable, Iterator, Mapping
+from pathlib import Path
+from typing import Any
+
+from evidence.complaints import DataError, DeclarationError, near_name, sentence
+from evidence.report.csv_form import record_to_csv
+from evidence.report.json_form import record_to_json
+from evidence.report.markdown import record_to_markdown
+from evidence.report.wording import short_name
+
+__all__ = ["FORMS", "check_suffix", "check_writable", "create_text", "save", "write_text"]
+
+# suffix -> the function that turns a record into the text of that form
+FORMS: dict[str, Callable[[Mapping[str, Any]], str]] = {
+    ".json": record_to_json,
+    ".csv": record_to_csv,
+    ".md": record_to_markdown,
+}
+_PATH_LIMIT = 400
+
+
+def save(record: Mapping[str, Any], path: str | Path) -> None:
+    """Write a record to a file in the form that its suffix names.
+
+    Parameters
+    ----------
+    record : dict
+        What ``Weighing.to_dict()`` gives.
+    path : str or Path
+        Where to; a file that is there already is replaced.
+
+    Raises
+    ------
+    DeclarationError
+        No form has this suffix.
+    DataError
+        The file cannot be written. Nothing is left behind, an earlier file is untouched.
+    """
+    form = FORMS[check_suffix(path)]
+    write_text(path, form(record))
+
+
+def check_suffix(path: str | Path) -> str:
+    """Return the suffix of a path in small letters.
+
+    Raises
+    ------
+    DeclarationError
+        No form has this suffix.
+    """
+    suffix = Path(path).suffix.lower()
+    if suffix in FORMS:
+        return suffix
+    raise DeclarationError(
+        sentence(
+            f"a result is saved by its suffix, one of {', '.join(FORMS)}",
+            short_name(repr(str(path)), _PATH_LIMIT),
+            f"Choose one of the known suffixes.{near_name(suffix, FORMS)}".rstrip("?"),
+        )
+    )
+
+
+def check_writable(path: str | Path) -> None:
+    """Try out, before a long calculation, whether a file could be written at the path.
+
+    Raises
+    ------
+    DataError
+        It could not; nothing has been written.
+    """
+    target = Path(path)
+    with _complaining(target):
+        _refuse_by_sight(target)
+        with _temporary(target) as (descriptor, _):
+            os.close(descriptor)
+
+
+def _refuse_by_sight(target: Path) -> None:
+    if not target.parent.is_dir():
+        raise _unwritable(target, f"there is no folder {short_name(target.parent, _PATH_LIMIT)}")
+    if target.is_dir():
+        raise _unwritable(target, "it is a folder")
+    if target.exists() and not target.is_file():
+        raise _unwritable(target, "it is not an ordinary file")
+    if target.exists() and not os.access(target, os.W_OK):
+        raise _unwritable(target, "it is write-protected")
+
+
+def write_text(path: str | Path, text: str) -> None:
+    """Write a text file in one stroke: whole, or not at all.
+
+    Raises
+    ------
+    DataError
+        The file cannot be written.
+    """
+    check_writable(path)
+    with _complaining(Path(path)), _filled(path, text) as (temporary, target):
+        os.replace(temporary, target)
+        _sync_folder(target.parent)
+
+
+def create_text(path: str | Path, text: str) -> None:
+    """Write a text file that is not there yet, in one stroke.
+
+    Raises
+    ------
+    DataError
+        There is something at the path already, or the file cannot be written.
+    """
+    target = Path(path)
+    if os.path.lexists(target):
+        raise _unwritable(target, "it is there already and is not overwritten")
+    check_writable(target)
+    with _complaining(target), _filled(path, text) as (temporary, _):
+        # taken empty first: fails where something came in between, on every file system
+        os.close(os.open(target, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o666))
+        try:
+            os.replace(temporary, target)
+        except BaseException:
+            target.unlink(missing_ok=True)
+            raise
+
+
+def _unwritable(path: Path, reason: str) -> DataError:
+    return DataError(
+        sentence(
+            f"{short_name(path, _PATH_LIMIT)} cannot be written: {reason}",
+            remedy="Give another path",
+        )
+    )
+
+
+@contextlib.contextmanager
+def _complaining(path: Path) -> Iterator[None]:
+    try:
+        yield
+    except DataError:
+        raise
+    except (OSError, ValueError) as error:  # ValueError: a path with a null character
+        reason = getattr(error, "strerror", None) or str(error)
+        raise _unwritable(path, reason[:1].lower() + reason[1:]) from None
+
+
+@contextlib.contextmanager
+def _temporary(path: str | Path) -> Iterator[tuple[int, Path]]:
+    """Open a new file beside the target, of the target's later permissions; remove it after."""
+    folder = Path(os.path.realpath(path)).parent
+    temporary = folder / f".evidence-{secrets.token_hex(8)}.tmp"
+    descriptor = os.open(temporary, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o666)
+    try:
+        yield descriptor, temporary
+    finally:
+        with contextlib.suppress(OSError):
+            temporary.unlink(missing_ok=True)
+
+
+@contextlib.contextmanager
+def _filled(path: str | Path, text: str) -> Iterator[tuple[Path, Path]]:
+    # a link is followed: the file it points to is the one to replace
+    target = Path(os.path.realpath(path))
+    with _temporary(path) as (descriptor, temporary):
+        with open(
+            descriptor, "w", encoding="utf-8", errors="backslashreplace", newline="\n"
+        ) as file:
+            file.write(text)
+            file.flush()
+            os.fsync(file.fileno())
+        if target.exists():
+            shutil.copymode(target, temporary)
+        yield temporary, target
+
+
+def _sync_folder(folder: Path) -> None:
+    """Make the new name itself last; some file systems cannot, and the file is there anyway."""
+    with contextlib.suppress(OSError):
+        descriptor = os.open(folder, os.O_RDONLY)
+        try:
+            os.fsync(descriptor)
+        finally:
+            os.close(descriptor)
