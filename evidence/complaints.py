@@ -11,8 +11,10 @@ import difflib
 import importlib
 import types
 from collections.abc import Iterable
+from typing import NamedTuple
 
 __all__ = [
+    "Caution",
     "DataError",
     "DeclarationError",
     "EvidenceWarning",
@@ -34,6 +36,16 @@ class DataError(ValueError):
 
 class EvidenceWarning(UserWarning):
     """A computed number must be read with care; the text says why and what to do."""
+
+
+class Caution(NamedTuple):
+    """Why a number must be read with care, and what to do about it."""
+
+    sentence: str
+    remedy: str = ""
+
+    def __str__(self) -> str:
+        return f"{self.sentence}. {self.remedy}" if self.remedy else self.sentence
 
 
 def sentence(expected: str, got: str | None = None, remedy: str | None = None) -> str:

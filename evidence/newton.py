@@ -1,0 +1,221 @@
+"""One step of the damped Newton search for a mode: the arithmetic shared by all drivers.
+
+:func:`begin` and :func:`advance` are functions of an array module ``xp`` (numpy or jax.numpy) and
+hold no loop, so that a NumPy loop, a compiled ``while_loop`` and a batch take the same steps.
+
+The objective is h = -log posterior density. Steps use the exact Hessian after unit-diagonal
+scaling, with the absolute values of its eigenvalues (so that a step always goes down), a cap in
+prior sd and backtracking by the rule of Armijo (1966). Near the end one full step is taken
+without conditions: the evidence depends on the start through the distance to the mode, and this
+step squares that distance.
+"""
+
+from __future__ import annotations
+
+from typing import Any, NamedTuple
+
+from evidence.outcome import Outcome
+
+__all__ = ["Search", "advance", "begin", "settle"]
+
+DECREMENT_SETTLED = 1e-11  # g' H^-1 g at which the last full step is taken
+DECREMENT_STUCK = 1e-7  # the same, below which a rejected step is put down to rounding
+DECREMENT_CONVERGED = 1e-10  # the same, at or below which a search counts as converged
+ROUNDING = 1e-14  # relative rounding error allowed in a comparison of two densities
+ARMIJO = 1e-4
+EIGENVALUE_FLOOR = 1e-9  # of the scaled Hessian
+FLAT_EIGENVALUE = 1e-10  # of the scaled Hessian, below which a direction counts as flat
+CAP = 2.0  # longest first step in prior sd
+CAP_MOST = 1e3
+RUNAWAY = 1e4  # distance from the prior's centre in prior sd
+HALVINGS = 45
+STEPS = 200
+
+SEARCHING, FINISHING, ENDED = 0, 1, 2
+
+
+class Search(NamedTuple):
+    """State of one search; every field is an array, so that it passes through jit and vmap.
+
+    Attributes
+    ----------
+    z : (d,)
+        Best point so far [unconstrained].
+    objective : ()
+        h at z [nats].
+    gradient, hessian : (d,), (d, d)
+        Of h at z.
+    direction, trial : (d,), (d,)
+        Search direction at z, and the next point to evaluate.
+    shrink, cap : (), ()
+        Backtracking factor, and the longest step in prior sd.
+    decrement : ()
+        g' H^-1 g with absolute eigenvalues, the squared Newton decrement at z [nats].
+    smallest : ()
+        Smallest eigenvalue of the scaled Hessian at z.
+    halvings, steps, phase, outcome : (), (), (), ()
+        Rejections in a row, evaluations, phase of the search, Outcome as an integer.
+    """
+
+    z: Any
+    objective: Any
+    gradient: Any
+    hessian: Any
+    direction: Any
+    trial: Any
+    shrink: Any
+    cap: Any
+    decrement: Any
+    smallest: Any
+    halvings: Any
+    steps: Any
+    phase: Any
+    outcome: Any
+
+
+def begin(xp: Any, start: Any) -> Search:
+    """State before the first evaluation, at a start (d,)."""
+    d = start.shape[0]
+    return Search(
+        z=start,
+        objective=xp.asarray(xp.inf),
+        gradient=xp.zeros(d),
+        hessian=xp.eye(d),
+        direction=xp.zeros(d),
+        trial=start,
+        shrink=xp.asarray(1.0),
+        cap=xp.asarray(CAP),
+        decrement=xp.asarray(xp.inf),
+        smallest=xp.asarray(0.0),
+        halvings=xp.asarray(0),
+        steps=xp.asarray(0),
+        phase=xp.asarray(SEARCHING),
+        outcome=xp.asarray(int(Outcome.OK)),
+    )
+
+
+def advance(
+    xp: Any,
+    search: Search,
+    objective: Any,
+    gradient: Any,
+    hessian: Any,
+    centre: Any,
+    spread: Any,
+) -> Search:
+    """Take h, its gradient and Hessian at ``search.trial``; accept or reject, and step on.
+
+    Parameters
+    ----------
+    xp : module
+        numpy or jax.numpy.
+    search : Search
+    objective, gradient, hessian : (), (d,), (d, d)
+        At ``search.trial``; may hold nan or inf.
+    centre, spread : (d,), (d,)
+        Prior centre and sd in z.
+    """
+    first = search.steps == 0
+    value_ok = xp.isfinite(objective)
+    derivative_ok = xp.all(xp.isfinite(gradient)) & xp.all(xp.isfinite(hessian))
+    infinite = objective == -xp.inf
+    slack = ROUNDING * (1.0 + xp.abs(objective))
+    slope = -xp.sum(search.gradient * search.direction)
+    wanted = search.objective - ARMIJO * search.shrink * slope
+    finishing = search.phase == FINISHING
+    lower = (objective <= wanted) | (objective <= search.objective + slack) & (slope < 1e-6)
+    accept = value_ok & derivative_ok & (first | finishing | lower)
+
+    def pick(new: Any, old: Any) -> Any:
+        return xp.where(accept, new, old)
+
+    z = pick(search.trial, search.z)
+    h = pick(objective, search.objective)
+    g = pick(xp.where(xp.isfinite(gradient), gradient, 0.0), search.gradient)
+    big = pick(xp.where(xp.isfinite(hessian), hessian, 0.0), search.hessian)
+    was_capped = xp.max(xp.abs(search.direction) / spread, initial=0.0) >= search.cap * 0.999
+    cap = xp.where(accept & was_capped & ~first, xp.minimum(2 * search.cap, CAP_MOST), search.cap)
+    newton, escape, decrement, smallest = _directions(xp, g, big, spread)
+
+    halvings = xp.where(accept, 0, search.halvings + 1)
+    stuck = ~accept & (decrement < DECREMENT_STUCK)
+    settled = ((decrement < DECREMENT_SETTLED) | stuck) & (smallest > FLAT_EIGENVALUE)
+    direction = xp.where(decrement < DECREMENT_SETTLED, newton + escape, newton)
+    direction = direction / xp.maximum(1.0, xp.max(xp.abs(direction) / spread, initial=0.0) / cap)
+    shrink = xp.where(accept, 1.0, 0.5 * search.shrink)
+    flat = (decrement < DECREMENT_SETTLED) & (xp.abs(smallest) <= FLAT_EIGENVALUE)
+    far = xp.max(xp.abs(z - centre) / spread, initial=0.0) > RUNAWAY
+
+    finish = settled & ~finishing
+    trial = xp.where(finish, z + newton, z + shrink * direction)
+    steps = search.steps + 1
+    outcome = _outcome(
+        xp,
+        infinite=infinite,
+        no_value=first & ~value_ok,
+        no_derivative=value_ok & ~derivative_ok & (first | (halvings > HALVINGS)),
+        far=far,
+        limit=steps >= STEPS,
+    )
+    ended = (outcome > 0) | finishing | flat | (halvings > HALVINGS)
+    phase = xp.where(ended, ENDED, xp.where(finish, FINISHING, SEARCHING))
+    return Search(
+        z=z,
+        objective=h,
+        gradient=g,
+        hessian=big,
+        direction=direction,
+        trial=trial,
+        shrink=shrink,
+        cap=cap,
+        decrement=decrement,
+        smallest=smallest,
+        halvings=halvings,
+        steps=steps,
+        phase=phase,
+        outcome=xp.where(ended & (outcome == 0), settle(xp, decrement, smallest), outcome),
+    )
+
+
+def settle(xp: Any, decrement: Any, smallest: Any) -> Any:
+    """Outcome of a search that ended by itself, from the decrement and the scaled eigenvalue."""
+    moving = decrement > DECREMENT_CONVERGED
+    singular = xp.where(
+        smallest < -FLAT_EIGENVALUE,
+        int(Outcome.INDEFINITE),
+        xp.where(smallest <= FLAT_EIGENVALUE, int(Outcome.FLAT), int(Outcome.OK)),
+    )
+    return xp.where(moving, int(Outcome.NO_PROGRESS), singular)
+
+
+def _directions(xp: Any, gradient: Any, hessian: Any, spread: Any) -> tuple[Any, Any, Any, Any]:
+    """Newton direction, a way off a saddle, squared decrement, smallest scaled eigenvalue."""
+    diagonal = xp.abs(xp.diagonal(hessian))
+    scale = 1.0 / xp.sqrt(xp.maximum(diagonal, 1e-12 / spread**2))
+    values, vectors = xp.linalg.eigh(hessian * scale[:, None] * scale[None, :])
+    along = vectors.T @ (scale * gradient)
+    kept = xp.maximum(xp.abs(values), EIGENVALUE_FLOOR)
+    newton = -scale * (vectors @ (along / kept))
+    decrement = xp.sum(along**2 / kept)
+    downhill = scale * vectors[:, 0]
+    # at a saddle the gradient gives no side; the largest component decides
+    side = xp.where(xp.sum(downhill / spread) >= 0, 1.0, -1.0)
+    escape = xp.where(values[0] < -FLAT_EIGENVALUE, side, 0.0) * downhill
+    return newton, escape, decrement, values[0]
+
+
+def _outcome(
+    xp: Any,
+    *,
+    infinite: Any,
+    no_value: Any,
+    no_derivative: Any,
+    far: Any,
+    limit: Any,
+) -> Any:
+    """The first trouble that applies, as an integer; zero while there is none."""
+    outcome = xp.where(limit, int(Outcome.STEP_LIMIT), int(Outcome.OK))
+    outcome = xp.where(far, int(Outcome.RUNAWAY), outcome)
+    outcome = xp.where(no_value, int(Outcome.NOT_FINITE), outcome)
+    outcome = xp.where(no_derivative, int(Outcome.NAN_DERIVATIVE), outcome)
+    return xp.where(infinite, int(Outcome.INFINITE), outcome)
