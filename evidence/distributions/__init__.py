@@ -5,6 +5,7 @@ and ``centre_and_spread``; ``shape=`` makes an array of independent parameters. 
 its map from the real line, the inverse and the log Jacobian.
 """
 
+from evidence.distributions.base import Distribution
 from evidence.distributions.continuous import Beta, Cauchy, Normal, StudentT, Uniform
 from evidence.distributions.discrete import Bernoulli, Binomial, NegativeBinomial, Poisson
 from evidence.distributions.scales import (
@@ -16,6 +17,7 @@ from evidence.distributions.scales import (
     LogNormal,
 )
 from evidence.distributions.supports import (
+    Support,
     above,
     below,
     between,
@@ -34,6 +36,7 @@ __all__ = [
     "Binomial",
     "Cauchy",
     "Dirichlet",
+    "Distribution",
     "Exponential",
     "Gamma",
     "HalfCauchy",
@@ -45,6 +48,7 @@ __all__ = [
     "Normal",
     "Poisson",
     "StudentT",
+    "Support",
     "Uniform",
     "above",
     "below",

@@ -175,7 +175,8 @@ class Above(Support):
 
     def label(self, name: str, index: Index = None, x_shape: Any = None) -> str:
         bound = bound_words(self.lower, index, x_shape, "lower bound")
-        return f"log({element(name, index)} - {bound})"
+        word = element(name, index)
+        return f"log {word}" if bound == "0" else f"log({word} - {bound})"
 
 
 @declared
