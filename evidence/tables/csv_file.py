@@ -73,7 +73,7 @@ def _read_rows(
     columns = [_Labels(name) if name in categories else _Numbers(name) for name in header]
     for lines, block in _blocks(rows, len(header), flaws):
         for column, texts in zip(columns, zip(*block, strict=True), strict=True):
-            column.take([text.strip() for text in texts], lines)
+            column.take(texts, lines)
     if not columns[0].rows:
         raise DataError(f"{flaws.source} has a header and no rows.")
     arrays = {column.name: column.finish(flaws) for column in columns}
@@ -113,17 +113,17 @@ def _blocks(
     before = rows.line_num
     for row in rows:
         line, before = before + 1, rows.line_num
-        if len(row) <= 1 and not "".join(row).strip():
-            blank.append(line)
-            continue
-        if len(row) != width:
-            message = f"line {line} of {flaws.source} must have {width} values, as the header has"
-            raise DataError(sentence(message, str(len(row))))
-        # In a file of one column an empty line between numbers is a missing number.
-        if width == 1:
+        if len(row) != width or width == 1:
+            if len(row) <= 1 and not "".join(row).strip():
+                blank.append(line)
+                continue
+            if len(row) != width:
+                message = f"line {line} of {flaws.source} must have {width} values, as the header"
+                raise DataError(sentence(message, str(len(row))))
+            # In a file of one column an empty line between numbers is a missing number.
             lines += blank
             block += [[""] for _ in blank]
-        blank = []
+            blank = []
         lines.append(line)
         block.append(row)
         if len(block) >= BLOCK:
@@ -165,9 +165,9 @@ class _Labels(_Column):
         self.labels: tuple[str, ...] = ()
         self._same: dict[str, str] = {}
 
-    def take(self, texts: list[str], lines: list[int]) -> None:
+    def take(self, texts: Sequence[str], lines: list[int]) -> None:
         self.rows += len(texts)
-        for text, line in zip(texts, lines, strict=True):
+        for text, line in zip(map(str.strip, texts), lines, strict=True):
             if text.lower() in MISSING:
                 self.complain(line, "missing")
             # One object per distinct label keeps long files small.
@@ -190,11 +190,11 @@ class _Numbers(_Column):
         self.word = ""
         self.missing = 0
 
-    def take(self, texts: list[str], lines: list[int]) -> None:
+    def take(self, texts: Sequence[str], lines: list[int]) -> None:
         self.rows += len(texts)
         part = _parse_block(texts)
         if part is None or (part.dtype.kind == "f" and not np.isfinite(part).all()):
-            for text, line in zip(texts, lines, strict=True):
+            for text, line in zip(map(str.strip, texts), lines, strict=True):
                 self._inspect(text, line)
         else:
             self.parts.append(part)
@@ -232,18 +232,18 @@ def _is_too_large(text: str) -> bool:
     return text.lstrip("+-").isdigit() and not INT64.min <= int(text) <= INT64.max
 
 
-def _parse_block(texts: list[str]) -> np.ndarray | None:
+def _parse_block(texts: Sequence[str]) -> np.ndarray | None:
     """Return a block as int64, float64 or bool, or None where values must be looked at singly."""
     if "_" in "".join(texts):
         return None
     try:
-        return np.array([int(text) for text in texts], np.int64)
+        return np.fromiter(map(int, texts), np.int64, len(texts))
     except OverflowError:
         return None
     except ValueError:
         pass
     try:
-        return np.array([float(text) for text in texts])
+        return np.fromiter(map(float, texts), np.float64, len(texts))
     except ValueError:
-        truth = [TRUTH.get(text) for text in texts]
+        truth = [TRUTH.get(text.strip()) for text in texts]
         return None if None in truth else np.array(truth)
