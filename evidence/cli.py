@@ -80,7 +80,7 @@ def reporting(command: Callable[..., int]) -> Callable[..., int]:
             return command(**options)
         except (click.ClickException, click.exceptions.Exit, click.Abort, BrokenPipeError):
             raise
-        except (Exception, SystemExit) as error:
+        except Exception as error:
             _complain(error, debug)
             return NOT_COMPUTED
 
@@ -249,7 +249,7 @@ def _weigh_study(
         study = _narrowed(read_study(study_path, data_path), only)
         from evidence.weighing import weigh as weigh_models
 
-        with _without_repeated_warnings():
+        with _without_repeated_warnings(), _staying():
             weighing = weigh_models(study, depth=depth, seed=seed, progress=progress)
         return weighing.to_dict()
 
@@ -283,6 +283,15 @@ def _printing_to_stderr() -> Iterator[None]:
     """Keep standard output for the result, whatever the code of a study prints."""
     with contextlib.redirect_stdout(sys.stderr):
         yield
+
+
+@contextlib.contextmanager
+def _staying() -> Iterator[None]:
+    """Take it for a mistake when code of a study ends the program."""
+    try:
+        yield
+    except SystemExit as error:
+        raise RuntimeError(f"the study ended the program, SystemExit {error}") from error
 
 
 @contextlib.contextmanager

@@ -131,12 +131,13 @@ def _cell(heading: str, content: str) -> Text:
 
 
 def _add_column(table: Table, heading: str, cells: Sequence[str]) -> None:
+    from rich.cells import cell_len
     from rich.text import Text
 
     justify = "left" if heading in _WORDS else "right"
     if heading in _WRAPPED:
         most = _UNWRAPPED_WIDTH.get(heading, 12)
-        width = min(max(len(text) for text in (heading, *cells)), most)
+        width = min(max(map(cell_len, [heading, *cells])), most)
         table.add_column(Text(heading), justify=justify, overflow="fold", min_width=width)
         return
     lines = [heading] if heading.endswith("%") else heading.rsplit(" ", 1)
@@ -144,7 +145,8 @@ def _add_column(table: Table, heading: str, cells: Sequence[str]) -> None:
         # rich drops the blanks behind a cell set to the right, which the alignment needs
         justify = "left"
         lines = [line.rjust(max(map(len, [*lines, *cells]))) for line in lines]
-    table.add_column(Text("\n".join(lines)), justify=justify, no_wrap=True)
+    width = max(map(cell_len, [*lines, *cells]))
+    table.add_column(Text("\n".join(lines)), justify=justify, no_wrap=True, min_width=width)
 
 
 def _fits(table: Table, console: Console, options: ConsoleOptions) -> bool:

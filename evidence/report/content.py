@@ -153,13 +153,17 @@ def _cautions(record: Record) -> list[str]:
 def _remarks(candidate: Record, names: Sequence[str]) -> tuple[Remark, ...]:
     """Return the warnings of a candidate; a failed one leads with what became of it."""
     said = [
-        Remark(in_words(w["sentence"], names), in_words(w.get("remedy") or "", names))
+        Remark(*(_stopped(in_words(w.get(key) or "", names)) for key in ("sentence", "remedy")))
         for w in candidate.get("warnings") or []
     ]
-    status = in_words(candidate.get("status_sentence") or "", names)
+    status = _stopped(in_words(candidate.get("status_sentence") or "", names))
     if candidate.get("trust") == "failed" and status and status not in [r.sentence for r in said]:
         said.insert(0, Remark(status, ""))
     return tuple(said)
+
+
+def _stopped(sentence: str) -> str:
+    return f"{sentence}." if sentence and sentence[-1] not in ".?!:" else sentence
 
 
 def _explanations(columns: Mapping[str, str], names: Sequence[str]) -> tuple[tuple[str, str], ...]:

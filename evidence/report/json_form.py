@@ -46,7 +46,7 @@ _CANDIDATE_KEYS: dict[str, tuple[type, ...]] = {
     "status_sentence": (str,),
     "warnings": (list,),
     "posterior": (list,),
-    "curvature": (dict,),
+    "curvature": (dict, type(None)),
     "audit": (list,),
 }
 # list of a candidate -> the text each of its entries must have
@@ -175,7 +175,7 @@ def _check_candidate(candidate: Any, where: str, source: str) -> None:
     for key, text_key in _ENTRIES.items():
         if not all(_has_text(entry, text_key) for entry in candidate[key]):
             raise DataError(_damaged(source, f"{where} has an entry in {key!r} that is not one"))
-    directions = candidate["curvature"].get("directions") or []
+    directions = (candidate["curvature"] or {}).get("directions") or []
     if not isinstance(directions, list) or not all(
         _has_text(direction, "combination") for direction in directions
     ):

@@ -86,7 +86,14 @@ def show(view: Any, file: IO[str] | None = None, width: int | None = None) -> No
     """
     from rich.console import Console
 
-    Console(file=file, width=width, highlight=False, markup=False, emoji=False).print(view)
+    console = Console(file=file, width=width, highlight=False, markup=False, emoji=False)
+    if console.is_terminal or console.is_jupyter:
+        console.print(view)
+        return
+    text = plain_text(view, console.width)
+    if not console.encoding.lower().startswith("utf"):
+        text = text.replace("\u2500", "-")
+    console.file.write(f"{text}\n")
 
 
 def plain_text(view: Any, width: int = 80) -> str:
