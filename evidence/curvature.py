@@ -192,7 +192,8 @@ def measure_curvature(
         (d,) labels of the coordinates.
     """
     loose = [
-        _direction(column, hessian, likelihood_hessian, names) for column in axes.directions.T[:DIRECTIONS_KEPT]
+        _direction(column, hessian, likelihood_hessian, names)
+        for column in axes.directions.T[:DIRECTIONS_KEPT]
     ]
     if likelihood_hessian is None or not axes.positive:
         shares, from_prior, determined = None, [], np.nan

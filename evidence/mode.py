@@ -74,7 +74,9 @@ class Peak:
             return -np.inf
         sign, log_det = np.linalg.slogdet(self.hessian)
         d = len(self.z)
-        return self.log_density + 0.5 * d * np.log(2 * np.pi) - 0.5 * log_det if sign > 0 else -np.inf
+        return (
+            self.log_density + 0.5 * d * np.log(2 * np.pi) - 0.5 * log_det if sign > 0 else -np.inf
+        )
 
 
 @dataclasses.dataclass(frozen=True, kw_only=True)

@@ -327,8 +327,9 @@ def _checked_supports(owner: str, support: Any, start: Mapping[str, Any]) -> dic
             )
         if not np.all(value.contains(start[name])):
             raise DeclarationError(
-                sentence(f"the start of {name!r} in {owner!r} lies outside its support",
-                         str(start[name]))
+                sentence(
+                    f"the start of {name!r} in {owner!r} lies outside its support", str(start[name])
+                )
             )
     return {name: support.get(name, real) for name in start}
 

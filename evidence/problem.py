@@ -237,9 +237,7 @@ class Problem:
         """Values in natural units at z (d,), or at draws (n, d): name -> (n, *shape)."""
         z = np.asarray(z, dtype=np.float64)
         single = z.ndim == 1
-        values = self.program("natural", _natural).numpy(
-            np.atleast_2d(z), self.hyper, self.data
-        )
+        values = self.program("natural", _natural).numpy(np.atleast_2d(z), self.hyper, self.data)
         return {k: v[0] if single else v for k, v in self._in_order(values).items()}
 
 

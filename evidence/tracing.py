@@ -66,9 +66,7 @@ def count_terms(
     """
     what = f"the log-likelihood of {owner!r}"
     with float64(), reworded(what):
-        traced, result = jax.make_jaxpr(terms, return_shape=True)(
-            np.zeros(dim), hyper, dict(data)
-        )
+        traced, result = jax.make_jaxpr(terms, return_shape=True)(np.zeros(dim), hyper, dict(data))
     if not hasattr(result, "shape") or not hasattr(result, "dtype"):
         raise DeclarationError(
             sentence(
