@@ -81,12 +81,22 @@ def row_table(
     console: Console,
     options: ConsoleOptions,
 ) -> list[RenderableType]:
-    """Return a table of the columns that say anything, or lists where it does not fit."""
+    """Return a table of the columns that say anything, or lists where it does not fit.
+
+    Notes that leave no room for the numbers follow below the table.
+    """
     used = [j for j in range(len(headings)) if any(row[j] for row in rows)]
     kept = [headings[j] for j in used]
     cells = [[row[j] for j in used] for row in rows]
     table = _table(kept, cells)
-    return [table] if _fits(table, console, options) else list(_listed(kept, cells))
+    if _fits(table, console, options):
+        return [table]
+    if kept[-1] == "note":
+        shorter = _table(kept[:-1], [row[:-1] for row in cells])
+        if _fits(shorter, console, options):
+            notes = [letter_by_letter(f"{row[0]}: {row[-1]}") for row in cells if row[-1]]
+            return [shorter, "", *notes]
+    return list(_listed(kept, cells))
 
 
 def _comparison_table(rows: Sequence[Mapping[str, str]], columns: Sequence[str]) -> Table:

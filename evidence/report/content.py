@@ -26,6 +26,7 @@ __all__ = [
     "CandidatePage",
     "Remark",
     "WeighingPage",
+    "as_sentence",
     "by_log_evidence",
     "candidate_page",
     "weighing_page",
@@ -153,17 +154,18 @@ def _cautions(record: Record) -> list[str]:
 def _remarks(candidate: Record, names: Sequence[str]) -> tuple[Remark, ...]:
     """Return the warnings of a candidate; a failed one leads with what became of it."""
     said = [
-        Remark(*(_stopped(in_words(w.get(key) or "", names)) for key in ("sentence", "remedy")))
+        Remark(*(as_sentence(in_words(w.get(key) or "", names)) for key in ("sentence", "remedy")))
         for w in candidate.get("warnings") or []
     ]
-    status = _stopped(in_words(candidate.get("status_sentence") or "", names))
+    status = as_sentence(in_words(candidate.get("status_sentence") or "", names))
     if candidate.get("trust") == "failed" and status and status not in [r.sentence for r in said]:
         said.insert(0, Remark(status, ""))
     return tuple(said)
 
 
-def _stopped(sentence: str) -> str:
-    return f"{sentence}." if sentence and sentence[-1] not in ".?!:" else sentence
+def as_sentence(text: str) -> str:
+    """Return the text with a full stop where it has no end of its own."""
+    return f"{text}." if text and text[-1] not in ".?!:" else text
 
 
 def _explanations(columns: Mapping[str, str], names: Sequence[str]) -> tuple[tuple[str, str], ...]:

@@ -16,6 +16,7 @@ from evidence.report.content import (
     HEADINGS,
     POSTERIOR_HEADINGS,
     Remark,
+    as_sentence,
     candidate_page,
     weighing_page,
 )
@@ -49,7 +50,7 @@ def notebook_fragment(record: Mapping[str, Any]) -> str:
             _table("Comparison of the candidates", headings, rows),
             *_warnings(page.remarks),
             _explained(page.explanations),
-            f"<p><small>{_safe(_sentence(page.title))}{_safe(page.facts)}</small></p>",
+            f"<p><small>{_safe(as_sentence(page.title))} {_safe(page.facts)}</small></p>",
         ]
     )
 
@@ -80,10 +81,6 @@ def _fragment(blocks: Iterable[str]) -> str:
 def _safe(text: str) -> str:
     # isolated, so that a name written from right to left does not turn what follows it
     return f"<bdi>{escape(text, quote=True)}</bdi>" if text else ""
-
-
-def _sentence(title: str) -> str:
-    return f"{title.rstrip('.')}. " if title else ""
 
 
 def _table(caption: str, headings: Sequence[str], rows: Iterable[Sequence[str]]) -> str:

@@ -13,6 +13,7 @@ from evidence.report.content import (
     POSTERIOR_HEADINGS,
     CandidatePage,
     Remark,
+    as_sentence,
     candidate_page,
     weighing_page,
 )
@@ -48,9 +49,7 @@ class WeighingView:
             yield letter_by_letter(name, "bold")
             yield from _remarks(remarks)
         yield ""
-        yield letter_by_letter(
-            f"{page.title.rstrip('.')}. {page.facts}" if page.title else page.facts, "dim"
-        )
+        yield letter_by_letter(f"{as_sentence(page.title)} {page.facts}".strip(), "dim")
 
 
 @dataclass(frozen=True)
@@ -68,6 +67,8 @@ class CandidateView:
         yield letter_by_letter(f"= {page.parts}")
         yield from _remarks(page.remarks)
         yield from _posterior_and_audit(page, console, options)
+        if page.curvature:
+            yield ""
         for line in page.curvature:
             yield letter_by_letter(line, "dim")
 

@@ -83,6 +83,21 @@ def test_a_candidate_shows_its_posterior_audit_and_curvature():
     assert "0.98 of it from the data" in text
 
 
+def test_notes_that_leave_no_room_follow_the_table():
+    posterior = make_candidate()["posterior"]
+    posterior[1] |= {"note": "share that is lost in a day; prior: litter halves within a year"}
+    view = CandidateView(make_candidate(posterior=posterior))
+    narrow, wide = (plain_text(view, width=width).splitlines() for width in (70, 120))
+    assert any(line.startswith("rate: share that is lost in a day;") for line in narrow)
+    assert any(line.startswith("rate       1/day  0.006132") for line in narrow)
+    assert any(line.startswith("rate       1/day  0.006132") and "share" in line for line in wide)
+
+
+def test_a_title_that_asks_keeps_its_question_mark():
+    text = plain_text(WeighingView(make_record(title="How fast?")), width=80)
+    assert "How fast? Data from" in text
+
+
 def test_a_long_posterior_says_how_much_is_left_out():
     row = make_candidate()["posterior"][0]
     posterior = [row | {"parameter": f"site[{j}]"} for j in range(500)]
