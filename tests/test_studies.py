@@ -8,6 +8,7 @@ from pathlib import Path
 import jax
 import numpy as np
 import pytest
+from scipy import stats
 
 from evidence.model import Model
 from evidence.study import read_study
@@ -105,9 +106,13 @@ def test_log_likelihood_gives_one_finite_term_a_row(study, model):
 def test_simulated_responses_scatter_around_the_predicted(study, model):
     response = RESPONSES[study.path.stem]
     data, p = dict(study.data), centres(model)
-    expected = evaluate(model.predict, p, data)[response]
     keys = jax.random.split(jax.random.key(7), 400)
-    draws = evaluate(jax.vmap(lambda key: model.simulate(key, p, data)[response]), keys)
+
+    def both(keys, p, data):
+        draws = jax.vmap(lambda key: model.simulate(key, p, data)[response])(keys)
+        return model.predict(p, data)[response], draws
+
+    expected, draws = evaluate(both, keys, p, data)
     assert expected.shape == data[response].shape
     assert draws.shape == (400, *expected.shape)
     error = draws.std(axis=0) / math.sqrt(400)
@@ -164,3 +169,31 @@ def test_pools_do_not_change_places():
     curves = [evaluate(models["two pools"].predict, p, dict(study.data)) for p in (own, twin)]
     np.testing.assert_allclose(curves[0]["grams"], curves[1]["grams"], rtol=1e-12)
     assert twin["excess"] < 0 < own["excess"]
+
+
+def scipy_terms(stem, name, p, data):
+    """The terms of the log-likelihood by scipy.stats, written anew from the study's text."""
+    if stem == "litter":
+        t = data["days"]
+        if name == "two pools":
+            slow, fast = p["slow"], p["slow"] * (1 + p["excess"])
+            left = p["fraction"] * np.exp(-fast * t) + (1 - p["fraction"]) * np.exp(-slow * t)
+        elif name == "power law":
+            left = (1 + t / p["age"]) ** (-p["power"])
+        else:
+            left = np.exp(-p.get("rate", 0.0) * t)
+        return stats.norm.logpdf(data["grams"], p["mass"] * left, p["noise"])
+    mean, count = np.exp(p["level"] + p["slope"] * (data["depth"] - 50) / 10), data["frogs"]
+    if name == "frogs gather":
+        return stats.nbinom.logpmf(count, p["size"], p["size"] / (p["size"] + mean))
+    chance = stats.poisson.pmf(count, mean)
+    return np.log(p.get("empty", 0.0) * (count == 0) + (1 - p.get("empty", 0.0)) * chance)
+
+
+@pytest.mark.parametrize("stem", ["litter", "frogs"])
+def test_log_likelihoods_agree_with_scipy(stem):
+    study, models = study_named(stem)
+    for name, model in models.items():
+        p, data = centres(model), dict(study.data)
+        terms = evaluate(model.log_likelihood, p, data)
+        np.testing.assert_allclose(terms, scipy_terms(stem, name, p, data), rtol=1e-10)

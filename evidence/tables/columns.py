@@ -150,7 +150,7 @@ def _refuse_objects(name: str, array: np.ndarray, flaws: Flaws, place: Place) ->
         flaws.text(name, str(present[0]))
         return
     for value in present:
-        if not isinstance(value, numbers.Real | np.bool_ | str) or type(value) is object:
+        if not isinstance(value, numbers.Real | np.bool_ | str):
             kind = type(value).__name__
             flaws.refuse(name, f"objects, such as a {kind}", "Convert it: x.astype(float)")
     bad = missing | words
