@@ -8,7 +8,7 @@ fit of the same shapes on), and L-BFGS before the NumPy loop in large dimension.
 from __future__ import annotations
 
 import dataclasses
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable
 from typing import Any
 
 import jax
@@ -36,6 +36,8 @@ LARGE = 100  # dimension above which L-BFGS goes before Newton
 MATTERS = 12.0  # nats below the leader at which a mode is still counted
 SAME_MODE = 0.1  # root mean square distance, in sd of the higher mode
 LBFGS_STEPS = 500
+COMPILED_FROM = 32  # starts from which compiling the whole search pays
+CARRIED_ON = 10  # times that a search which ran out of steps is taken up again
 
 
 @dataclasses.dataclass(frozen=True, kw_only=True)
@@ -126,7 +128,7 @@ def find_modes(
     start found is a sign that others were missed.
     """
     large = problem.dim > LARGE
-    search = _pick_driver(problem, large)
+    seen_before = problem.count_fit()
     most = MOST_STARTS_LARGE if large else MOST_STARTS
     ends: list[Peak] = []
     number = FIRST_STARTS
@@ -134,7 +136,8 @@ def find_modes(
         new = starting_points(problem, number, seed)[len(ends) :]
         if progress is not None:
             progress(f"mode search from {number} starts")
-        ends += search(problem, new)
+        search = _pick_driver(large=large, compiled=seen_before or number >= COMPILED_FROM)
+        ends = _carried_on(problem, search, ends + search(problem, new))
         findings = gather(ends)
         if number >= most or not findings.seen_once:
             return findings
@@ -182,8 +185,8 @@ def find_likelihood_peak(problem: Problem, start: np.ndarray) -> Peak:
     """Peak of the likelihood alone, by Newton's method from a start (d,)."""
 
     def objective(z: np.ndarray) -> tuple[Any, Any, Any]:
-        here = problem.evaluate(z)
-        return -here.log_likelihood, -here.likelihood_gradient, here.likelihood_hessian
+        here = problem.likelihood_part(z)
+        return -here.log_density, -here.gradient, here.hessian
 
     return _descend_numpy(problem, objective, start)
 
@@ -289,10 +292,22 @@ def _descend(density: Density) -> Callable[..., Any]:
     return evidence_descend
 
 
-def _pick_driver(problem: Problem, large: bool) -> Callable[..., Sequence[Peak]]:
+def _pick_driver(*, large: bool, compiled: bool) -> Callable[..., list[Peak]]:
     if large:
         return search_large
-    return search_compiled if problem.count_fit() else search_numpy
+    return search_compiled if compiled else search_numpy
+
+
+def _carried_on(
+    problem: Problem, search: Callable[..., list[Peak]], ends: list[Peak]
+) -> list[Peak]:
+    """Go on where a search ran out of steps above every peak: long bent valleys need more."""
+    for _ in range(CARRIED_ON):
+        top = max(ends, key=lambda end: _finite(end.log_density))
+        if top.outcome is not Outcome.STEP_LIMIT:
+            break
+        ends = [end for end in ends if end is not top] + search(problem, top.z[None])
+    return ends
 
 
 def _peak(state: newton.Search) -> Peak:

@@ -143,7 +143,7 @@ def advance(
     direction = xp.where(decrement < DECREMENT_SETTLED, newton + escape, newton)
     direction = direction / xp.maximum(1.0, xp.max(xp.abs(direction) / spread, initial=0.0) / cap)
     shrink = xp.where(accept, 1.0, 0.5 * search.shrink)
-    flat = (decrement < DECREMENT_SETTLED) & (xp.abs(smallest) <= FLAT_EIGENVALUE)
+    flat = ((decrement < DECREMENT_SETTLED) | stuck) & (xp.abs(smallest) <= FLAT_EIGENVALUE)
     far = xp.max(xp.abs(z - centre) / spread, initial=0.0) > RUNAWAY
 
     finish = settled & ~finishing
