@@ -11,7 +11,7 @@ from typing import Any
 __version__ = "0.1.0"
 
 _PLACES = {
-    "Approximation": "evidence.approximation",
+    "Approximation": "evidence.estimate",
     "DataError": "evidence.complaints",
     "DeclarationError": "evidence.complaints",
     "EvidenceWarning": "evidence.complaints",

@@ -186,8 +186,10 @@ def _verdict(
         return f"No verdict: no candidate has a log evidence{left_out}."
     if runner_up is None:
         if len(entries) == 1:
-            return f"{leader.name} is the only candidate; its log evidence is "\
+            return (
+                f"{leader.name} is the only candidate; its log evidence is "
                 f"{leader.log_evidence:.2f} nats."
+            )
         return f"Not settled: {leader.name} is the only candidate with a log evidence{left_out}."
     factor = leader.log_evidence - runner_up.log_evidence
     low, high = ranges[leader.name]
@@ -207,9 +209,7 @@ def _reason(leader: Entry, entries: Sequence[Entry]) -> str:
         return " The log evidences are unchecked."
     if leader.trust not in TRUSTED:
         return f" The number of {leader.name} is {leader.trust}."
-    open_ones = [
-        e for e in entries if e.counted and e is not leader and not _is_behind(leader, e)
-    ]
+    open_ones = [e for e in entries if e.counted and e is not leader and not _is_behind(leader, e)]
     doubtful = [e.name for e in open_ones if e.trust == "doubtful"]
     if doubtful:
         return f" {_listed(doubtful)} is doubtful and could overtake."

@@ -155,7 +155,7 @@ class Posterior:
             share - 0.5 * (z - m.z) @ m.hessian @ (z - m.z) + 0.5 * np.linalg.slogdet(m.hessian)[1]
             for share, m in zip(np.log(self.mode_weights), self.modes, strict=True)
         ]
-        jacobian = float(self.problem.evaluate(z).log_jacobian)
+        jacobian = float(self.problem.prior_part(z).log_jacobian)
         return float(logsumexp(pieces) - 0.5 * len(z) * LOG_2PI - jacobian)
 
     @functools.cached_property

@@ -21,44 +21,48 @@ from evidence.model import Model, call_flexibly
 from evidence.tables import named_arrays
 from evidence.tracing import count_terms
 
-__all__ = ["Evaluation", "Problem", "derivatives"]
+__all__ = ["Density", "Evaluation", "PriorPart", "Problem", "derivatives"]
 
 BATCH_ROWS = 1024
 BATCH_TERMS = 4_000_000  # rows x terms held at once
 
 
 class Evaluation(NamedTuple):
-    """The log posterior density at one point, in parts, with derivatives in z.
+    """The log posterior density at one point, with derivatives in z.
 
     Attributes
     ----------
-    log_likelihood, log_prior, log_jacobian : ()
-        Parts of the log density [nats].
+    log_density : ()
+        Log of likelihood, prior density and Jacobian [nats].
     gradient : (d,)
-        Of the log posterior density, all parts.
+        Of the log density.
     hessian : (d, d)
-        Of *minus* the log posterior density: the curvature.
-    likelihood_gradient : (d,)
-        Of the log-likelihood.
-    likelihood_hessian : (d, d)
-        Of *minus* the log-likelihood.
-    values : dict
-        The parameters in natural units.
+        Of *minus* the log density: the curvature.
     """
 
-    log_likelihood: Any
+    log_density: Any
+    gradient: Any
+    hessian: Any
+
+
+class PriorPart(NamedTuple):
+    """The part of the log density that does not come from the data, at one point.
+
+    Attributes
+    ----------
+    log_prior, log_jacobian : (), ()
+        [nats].
+    gradient, hessian : (d,), (d, d)
+        Of the sum of both; of *minus* the sum of both.
+    values : dict
+        The parameters in natural units, in the order of declaration.
+    """
+
     log_prior: Any
     log_jacobian: Any
     gradient: Any
     hessian: Any
-    likelihood_gradient: Any
-    likelihood_hessian: Any
-    values: Any
-
-    @property
-    def log_density(self) -> Any:
-        """Log posterior density in z, up to the evidence [nats]."""
-        return self.log_likelihood + self.log_prior + self.log_jacobian
+    values: dict[str, Any]
 
 
 def derivatives(function: Callable[..., Any], z: Any) -> tuple[Any, Any, Any, Any]:
@@ -83,49 +87,39 @@ class Density:
     model: Model
     layout: Layout
 
-    def log_likelihood(self, z: Any, hyper: Any, data: Any) -> Any:
-        """Sum of the log-likelihood terms at z: () [nats]."""
-        values, _, _ = unpack(self.layout, z, hyper, data)
-        return self._likelihood(values, hyper, data)
-
-    def _likelihood(self, values: Any, hyper: Any, data: Any) -> Any:
-        p = Named({**values, **hyper["constants"]}, "parameter", self.model.name)
-        d = Named(data, "column", self.model.name)
-        return jnp.sum(jnp.asarray(call_flexibly(self.model.log_likelihood, p, d), jnp.float64))
-
     def terms(self, z: Any, hyper: Any, data: Any) -> Any:
         """What the user's log-likelihood returns: () or (n,) [nats]."""
-        values, _, _ = unpack(self.layout, z, hyper, data)
+        return self._terms(unpack(self.layout, z, hyper, data)[0], hyper, data)
+
+    def _terms(self, values: Any, hyper: Any, data: Any) -> Any:
         p = Named({**values, **hyper["constants"]}, "parameter", self.model.name)
         return call_flexibly(self.model.log_likelihood, p, Named(data, "column", self.model.name))
+
+    def log_likelihood(self, z: Any, hyper: Any, data: Any) -> Any:
+        """Sum of the log-likelihood terms at z: () [nats]."""
+        return jnp.sum(self.terms(z, hyper, data))
 
     def log_density(self, z: Any, hyper: Any, data: Any) -> Any:
         """Log posterior density at z, up to the evidence: () [nats]; nan where undefined."""
         values, log_prior, log_jacobian = unpack(self.layout, z, hyper, data)
-        return self._likelihood(values, hyper, data) + log_prior + log_jacobian
+        return jnp.sum(self._terms(values, hyper, data)) + log_prior + log_jacobian
 
     def evaluate(self, z: Any, hyper: Any, data: Any) -> Evaluation:
-        """Parts, gradient and Hessian at z."""
+        """Log density, gradient and curvature at z."""
+        value, _, slope, curve = derivatives(
+            lambda point: (self.log_density(point, hyper, data), ()), z
+        )
+        return Evaluation(log_density=value, gradient=slope, hessian=-curve)
 
-        def likelihood(z: Any) -> Any:
-            return self.log_likelihood(z, hyper, data), ()
+    def prior_part(self, z: Any, hyper: Any, data: Any) -> PriorPart:
+        """Prior and Jacobian with derivatives, and the natural values, at z."""
 
         def rest(z: Any) -> Any:
             values, log_prior, log_jacobian = unpack(self.layout, z, hyper, data)
             return log_prior + log_jacobian, (values, log_prior, log_jacobian)
 
-        fit, _, fit_slope, fit_curve = derivatives(likelihood, z)
         _, (values, log_prior, log_jacobian), slope, curve = derivatives(rest, z)
-        return Evaluation(
-            log_likelihood=fit,
-            log_prior=log_prior,
-            log_jacobian=log_jacobian,
-            gradient=fit_slope + slope,
-            hessian=-(fit_curve + curve),
-            likelihood_gradient=fit_slope,
-            likelihood_hessian=-fit_curve,
-            values=values,
-        )
+        return PriorPart(log_prior, log_jacobian, slope, -curve, values)
 
 
 class Problem:
@@ -189,10 +183,25 @@ class Problem:
         return before
 
     def evaluate(self, z: np.ndarray) -> Evaluation:
-        """Parts and derivatives at z (d,), as NumPy arrays."""
+        """Log density and derivatives at z (d,), as NumPy arrays."""
         self.evaluations += 1
-        here = self.program("evaluate", _evaluate).numpy(z, self.hyper, self.data)
-        return here._replace(values=self._in_order(here.values))
+        packed = np.asarray(self.program("evaluate", _evaluate)(z, self.hyper, self.data))
+        d = self.dim
+        return Evaluation(packed[0], packed[1 : d + 1], packed[d + 1 :].reshape(d, d))
+
+    def prior_part(self, z: np.ndarray) -> PriorPart:
+        """What does not come from the data at z (d,), as NumPy arrays."""
+        part = self.program("prior", _prior_part).numpy(z, self.hyper, self.data)
+        return part._replace(values=self._in_order(part.values))
+
+    def likelihood_part(self, z: np.ndarray) -> Evaluation:
+        """Log-likelihood and derivatives at z (d,): the whole less the prior's part."""
+        whole, part = self.evaluate(z), self.prior_part(z)
+        return Evaluation(
+            whole.log_density - part.log_prior - part.log_jacobian,
+            whole.gradient - part.gradient,
+            whole.hessian - part.hessian,
+        )
 
     def _in_order(self, values: dict[str, Any]) -> dict[str, Any]:
         """JAX sorts the names of a dict; the reader wants the order of declaration."""
@@ -242,10 +251,19 @@ class Problem:
 
 
 def _evaluate(density: Density) -> Callable[..., Any]:
-    def evidence_evaluate(z: Any, hyper: Any, data: Any) -> Evaluation:
-        return density.evaluate(z, hyper, data)
+    def evidence_evaluate(z: Any, hyper: Any, data: Any) -> Any:
+        here = density.evaluate(z, hyper, data)
+        # one array: fetching each output by itself costs more than the arithmetic
+        return jnp.concatenate([here.log_density[None], here.gradient, here.hessian.ravel()])
 
     return evidence_evaluate
+
+
+def _prior_part(density: Density) -> Callable[..., Any]:
+    def evidence_prior(z: Any, hyper: Any, data: Any) -> PriorPart:
+        return density.prior_part(z, hyper, data)
+
+    return evidence_prior
 
 
 def _batch(density: Density) -> Callable[..., Any]:

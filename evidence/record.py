@@ -8,9 +8,9 @@ from typing import Any
 
 import numpy as np
 
-from evidence.approximation import Approximation
 from evidence.complaints import Caution
 from evidence.curvature import Curvature, Direction
+from evidence.estimate import Approximation
 from evidence.outcome import Outcome
 from evidence.posterior import RecordedPosterior
 

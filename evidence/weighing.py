@@ -11,9 +11,10 @@ from typing import Any
 
 import numpy as np
 
-from evidence.approximation import Approximation, announce, audit, check_options, fit
+from evidence.approximation import announce, audit, check_options, fit
 from evidence.comparison import OUT_OF_REACH, TRUSTED, Comparison, Entry, compare
 from evidence.complaints import DeclarationError, near_name, sentence
+from evidence.estimate import Approximation
 from evidence.model import Model
 from evidence.record import candidate_record, recorded_candidate, versions
 from evidence.report.html import notebook_fragment
