@@ -28,6 +28,7 @@ FLAT_EIGENVALUE = 1e-10  # of the scaled Hessian, below which a direction counts
 CAP = 2.0  # longest first step in prior sd
 CAP_MOST = 1e3
 RUNAWAY = 1e4  # distance from the prior's centre in prior sd
+STRAYED = 50.0  # the same, from which derivatives that are not finite count as running away
 HALVINGS = 45
 STEPS = 200
 
@@ -144,7 +145,10 @@ def advance(
     direction = direction / xp.maximum(1.0, xp.max(xp.abs(direction) / spread, initial=0.0) / cap)
     shrink = xp.where(accept, 1.0, 0.5 * search.shrink)
     flat = ((decrement < DECREMENT_SETTLED) | stuck) & (xp.abs(smallest) <= FLAT_EIGENVALUE)
-    far = xp.max(xp.abs(z - centre) / spread, initial=0.0) > RUNAWAY
+    distance = xp.max(xp.abs(z - centre) / spread, initial=0.0)
+    lost = value_ok & ~derivative_ok & (first | (halvings > HALVINGS))
+    # a scale on its way to zero overflows in the derivatives before it is far in prior sd
+    far = (distance > RUNAWAY) | (lost & (distance > STRAYED))
 
     finish = settled & ~finishing
     trial = xp.where(finish, z + newton, z + shrink * direction)
@@ -153,7 +157,7 @@ def advance(
         xp,
         infinite=infinite,
         no_value=first & ~value_ok,
-        no_derivative=value_ok & ~derivative_ok & (first | (halvings > HALVINGS)),
+        no_derivative=lost & (distance <= STRAYED),
         far=far,
         limit=steps >= STEPS,
     )
