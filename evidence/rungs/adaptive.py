@@ -16,7 +16,8 @@ __all__ = ["learn_mixture", "mixture_from_draws", "refit", "sample_adapted"]
 ROUNDS = 4
 STEPS_PER_ROUND = 3
 KEPT_OF_START = 0.2
-MANY_COMPONENTS, FEW_COMPONENTS = 8, 2
+WHOLE_SHARE, WHOLE_STRETCH = 0.1, 3.0**0.5
+COMPONENTS, FEW_COMPONENTS = 8, 2
 MANY_UP_TO_DIM = 15
 SMALLEST_SHARE = 1e-3
 SMALLEST_SUPPORT = 3.0  # effective draws below which a component is dropped
@@ -30,7 +31,7 @@ def sample_adapted(
     *,
     draws_per_round: int,
     final_draws: int,
-    rounds: int = ROUNDS,
+    size: int = COMPONENTS,
 ) -> Sample:
     """Adapt a Student-t mixture to the target over a few rounds, then sample from it.
 
@@ -44,8 +45,8 @@ def sample_adapted(
         Source of all draws.
     draws_per_round, final_draws : int
         Draws of each adapting round, and of the estimate; the latter are fresh.
-    rounds : int
-        Number of adapting rounds.
+    size : int
+        Number of components to learn (two where there are more than 15 dimensions).
 
     Returns
     -------
@@ -57,7 +58,7 @@ def sample_adapted(
     Cappe, Douc, Guillin, Marin & Robert (2008), Stat. Comput. 18: adaptive mixtures.
     Ionides (2008), J. Comput. Graph. Stat. 17: truncated weights.
     """
-    mixture = learn_mixture(target, start, rng, draws_per_round=draws_per_round, rounds=rounds)
+    mixture = learn_mixture(target, start, rng, draws_per_round=draws_per_round, size=size)
     return sample_mixture(target, mixture, final_draws, rng)
 
 
@@ -67,32 +68,44 @@ def learn_mixture(
     rng: np.random.Generator,
     *,
     draws_per_round: int,
-    rounds: int = ROUNDS,
+    size: int = COMPONENTS,
 ) -> Mixture:
     """Return the mixture learned from weighted draws, with 20 % of the start in it."""
     current, learned = start, None
-    for _ in range(rounds):
+    for _ in range(ROUNDS):
         sample = sample_mixture(target, current, draws_per_round, rng, replicates=1)
         if not np.isfinite(sample.estimate):
             break
         weights = truncated_share(sample.log_weights)
         if learned is None:
-            learned = _first_guess(sample.draws, weights, start, rng)
+            learned = _first_guess(sample.draws, weights, start, size, rng)
         learned = refit(learned, sample.draws, weights)
-        current = learned.joined(start, KEPT_OF_START)
+        whole = _around_all(sample.draws, weights, start)
+        current = learned.joined(whole, WHOLE_SHARE).joined(start, KEPT_OF_START)
     return current
 
 
-def _first_guess(
-    draws: np.ndarray, weights: np.ndarray, start: Mixture, rng: np.random.Generator
-) -> Mixture:
-    """Place components on draws taken by weight, with most of the whole covariance each."""
-    d = draws.shape[1]
-    few = d > MANY_UP_TO_DIM
-    size = FEW_COMPONENTS if few else MANY_COMPONENTS
+def _around_all(draws: np.ndarray, weights: np.ndarray, start: Mixture) -> Mixture:
+    """One wide component over everything seen, for the tails between and beyond the others."""
     mean = weights @ draws
     spread = _covariance(draws, weights, mean)
-    floor = start.components[0].axes @ start.components[0].axes.T
+    axes = _root(spread, spread + 1e-9 * _start_covariance(start))
+    return Mixture.of([component(mean, WHOLE_STRETCH * axes)], np.ones(1))
+
+
+def _start_covariance(start: Mixture) -> np.ndarray:
+    return start.components[0].axes @ start.components[0].axes.T
+
+
+def _first_guess(
+    draws: np.ndarray, weights: np.ndarray, start: Mixture, size: int, rng: np.random.Generator
+) -> Mixture:
+    """Place components on draws taken by weight, with most of the whole covariance each."""
+    few = draws.shape[1] > MANY_UP_TO_DIM
+    size = FEW_COMPONENTS if few else size
+    mean = weights @ draws
+    spread = _covariance(draws, weights, mean)
+    floor = _start_covariance(start)
     axes = _root(spread + (0.5 if few else 1e-6) * floor, spread + 1e-9 * floor)
     chosen = rng.choice(len(draws), size=size, p=weights)
     scale = 1.0 if few else 0.6

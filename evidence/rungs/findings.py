@@ -6,6 +6,7 @@ from collections.abc import Iterator, Sequence
 
 import numpy as np
 
+from evidence.outcome import Outcome
 from evidence.rungs.importance import Sample
 from evidence.rungs.probes import FarEnds, Probes, name_axis
 from evidence.rungs.record import Mode, Target
@@ -90,7 +91,7 @@ def _kink(where: str) -> Warned:
 def describe_spike(target: Target, mode: Mode, sample: Sample) -> list[Warned]:
     """Recognise a search that ended on a needle of density far above where the mass is."""
     top = np.max(sample.log_weights)
-    if mode.status == 0 or not np.isfinite(top):
+    if mode.status == Outcome.OK or not np.isfinite(top):
         return []
     weights = np.exp(sample.log_weights - top)
     held = weights > 0.0
@@ -110,7 +111,7 @@ def describe_spike(target: Target, mode: Mode, sample: Sample) -> list[Warned]:
 
 def describe_prior_held(target: Target, mode: Mode) -> list[Warned]:
     """Name the directions in which the posterior is as wide as the prior."""
-    if not target.spread_known:
+    if not target.spread_known or mode.status not in (Outcome.OK, Outcome.FLAT):
         return []
     widths = np.linalg.norm(mode.axes / target.spread[:, None], axis=0)
     held = np.flatnonzero((widths > PRIOR_HELD) | mode.capped)

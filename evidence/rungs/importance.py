@@ -56,6 +56,9 @@ def mode_mixture(modes: Sequence[Mode], probes: Sequence[Probes], target: Target
     """
     parts = [_around(m, p) for m, p in zip(modes, probes, strict=True)]
     heights = np.array([m.log_density - p.log_norm for m, p in zip(modes, parts, strict=True)])
+    peaks = np.array([np.isfinite(m.laplace) for m in modes])
+    if peaks.any():  # a search that ran off must not draw the mixture after it
+        heights = np.where(peaks, heights, -np.inf)
     shares = np.exp(heights - heights.max())
     shares = np.maximum(shares / shares.sum(), SMALLEST_SHARE)
     local = Mixture.of(parts, shares)

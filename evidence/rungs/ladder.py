@@ -303,22 +303,22 @@ class _Ascent:
 
     def _doubtful_findings(self, sample: Sample) -> list[tuple[str, str]]:
         wide = findings.describe_unreached_width(self.target, sample)
-        return wide + findings.describe_spike(self.target, self.modes[0], sample)
+        needles = (findings.describe_spike(self.target, m, sample) for m in self.modes)
+        return wide + [told for needle in needles for told in needle]
 
     def _unbounded(self) -> bool:
-        runs_off = self.modes[0].status in UNBOUNDED
+        runs_off = any(m.status in UNBOUNDED for m in self.modes)
         ends = self.ends is not None and (self.ends.rising.any() or self.ends.flat.any())
         return bool(runs_off or ends)
 
     def _warnings(self, verdict: Verdict) -> list[tuple[str, str]]:
         told = []
-        leading = self.modes[0]
-        if leading.status != Outcome.OK:
-            reason = Outcome(leading.status)
-            told.append((reason.sentence, reason.remedy))
+        for reason in dict.fromkeys(Outcome(m.status) for m in self.modes):
+            if reason != Outcome.OK:
+                told.append((reason.sentence, reason.remedy))
         if self.ends is not None:
             told += findings.describe_probes(self.target, self.modes, self.probes, self.ends)
-        told += findings.describe_prior_held(self.target, leading)
+        told += findings.describe_prior_held(self.target, self.modes[0])
         if not self.target.spread_known:
             told.append(findings.missing_spread())
         for sample in self._samples(verdict):

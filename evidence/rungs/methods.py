@@ -153,6 +153,7 @@ def _adapt_twice(
         return sample_adapted(
             standing.target, start, standing.rng(stream, repetition),
             draws_per_round=int(ROUND_DRAWS * factor), final_draws=int(FINAL_DRAWS * factor) // 8 * 8,
+            size=8 if stream == 3 else 16,
         )  # fmt: skip
 
     wide = run(standing.mixture, 0)
