@@ -6,7 +6,8 @@ import dataclasses
 from collections.abc import Sequence
 
 import numpy as np
-from scipy.special import logsumexp
+
+from evidence.arithmetic import log_sum_exp
 
 __all__ = ["Comparison", "Entry", "compare", "decisive_prior_probability", "grade"]
 
@@ -114,7 +115,7 @@ def decisive_prior_probability(counted: Sequence[Entry], leader: Entry | None) -
         return np.nan
     share = np.array([e.prior_probability for e in others])
     with np.errstate(divide="ignore"):
-        log_q = logsumexp([e.log_evidence for e in others] + np.log(share / share.sum()))
+        log_q = log_sum_exp([e.log_evidence for e in others] + np.log(share / share.sum()))
     # in units of the leader's evidence, so that nothing overflows
     log_odds = np.log(DECISIVE) + log_q - np.log1p(-DECISIVE) - leader.log_evidence
     return float(1.0 / (1.0 + np.exp(-log_odds))) if log_odds > -700 else 0.0
@@ -136,7 +137,7 @@ def _log_weight(entry: Entry) -> float:
 
 def _probabilities(counted: Sequence[Entry]) -> np.ndarray:
     weights = np.array([_log_weight(e) for e in counted])
-    return np.exp(weights - logsumexp(weights)) if len(weights) else weights
+    return np.exp(weights - log_sum_exp(weights)) if len(weights) else weights
 
 
 def _intervals(counted: Sequence[Entry], seed: int) -> list[tuple[float, float]]:
@@ -149,7 +150,7 @@ def _intervals(counted: Sequence[Entry], seed: int) -> list[tuple[float, float]]
         for k, e in enumerate(counted)
     ]
     weights = np.stack(columns, axis=1)
-    chances = np.exp(weights - logsumexp(weights, axis=1, keepdims=True))
+    chances = np.exp(weights - log_sum_exp(weights, axis=1, keepdims=True))
     low, high = np.quantile(chances, [0.025, 0.975], axis=0)
     return list(zip(low.tolist(), high.tolist(), strict=True))
 

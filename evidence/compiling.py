@@ -23,7 +23,7 @@ from typing import Any
 import jax
 import numpy as np
 
-__all__ = ["Program", "float64", "on_device"]
+__all__ = ["Program", "as_numpy", "float64", "on_device"]
 
 CACHE_VARIABLE = "EVIDENCE_COMPILE_CACHE"
 _LOCK = threading.RLock()
@@ -39,6 +39,11 @@ def on_device(tree: Any) -> Any:
     """Put the arrays of a pytree on the device once, keeping their 64 bits."""
     with float64():
         return jax.device_put(tree)
+
+
+def as_numpy(tree: Any) -> Any:
+    """Fetch the arrays of a pytree as NumPy arrays."""
+    return jax.tree_util.tree_map(np.asarray, tree)
 
 
 class Program:
@@ -63,10 +68,6 @@ class Program:
                 result = self._jitted(*arguments)
             self._compiled = True
             return result
-
-    def numpy(self, *arguments: Any) -> Any:
-        """Run, and return the outputs as NumPy arrays."""
-        return jax.tree_util.tree_map(np.asarray, self(*arguments))
 
 
 def cache_directory() -> Path | None:

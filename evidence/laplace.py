@@ -11,6 +11,7 @@ from collections.abc import Callable, Sequence
 
 import numpy as np
 
+from evidence.arithmetic import log_sum_exp
 from evidence.curvature import Axes, whitened_axes
 from evidence.mode import Peak
 from evidence.outcome import Outcome
@@ -128,11 +129,8 @@ def describe_mode(
 
 def sum_modes(values: Sequence[float]) -> float:
     """Log of the sum of the evidences of several modes [nats]; nan ones are left out."""
-    kept = np.array([v for v in values if np.isfinite(v)])
-    if not len(kept):
-        return np.nan
-    top = kept.max()
-    return float(top + np.log(np.sum(np.exp(kept - top))))
+    kept = [value for value in values if np.isfinite(value)]
+    return log_sum_exp(kept) if kept else np.nan
 
 
 def expand(

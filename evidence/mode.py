@@ -14,9 +14,10 @@ from typing import Any
 import jax
 import jax.numpy as jnp
 import numpy as np
-from scipy.special import ndtri
 
 from evidence import newton
+from evidence.arithmetic import normal_quantile
+from evidence.compiling import as_numpy
 from evidence.outcome import Outcome
 from evidence.problem import Density, Problem
 
@@ -153,7 +154,7 @@ def starting_points(problem: Problem, number: int, seed: int) -> np.ndarray:
     steps = np.sqrt(_primes(problem.dim)) % 1.0
     index = np.arange(1, number - len(known) + 1)[:, None]
     uniform = (rng.random(problem.dim) + index * steps) % 1.0
-    drawn = problem.centre + problem.spread * ndtri(np.clip(uniform, 1e-6, 1 - 1e-6))
+    drawn = problem.centre + problem.spread * normal_quantile(np.clip(uniform, 1e-6, 1 - 1e-6))
     return np.concatenate([np.array(known), drawn])[:number]
 
 
@@ -218,7 +219,7 @@ def search_compiled(problem: Problem, starts: np.ndarray) -> list[Peak]:
     for first in range(0, len(starts), FIRST_STARTS):
         some = starts[first : first + FIRST_STARTS]
         padded = np.concatenate([some, np.repeat(some[-1:], FIRST_STARTS - len(some), axis=0)])
-        found = program.numpy(padded, problem.centre, problem.spread, problem.hyper, problem.data)
+        found = as_numpy(program(padded, problem.centre, problem.spread))
         problem.evaluations += int(np.sum(found.steps[: len(some)]))
         for index in range(len(some)):
             peaks.append(_peak(jax.tree_util.tree_map(lambda x, i=index: x[i], found)))
@@ -249,9 +250,7 @@ def search_large(problem: Problem, starts: np.ndarray) -> list[Peak]:
     A quasi-Newton inverse Hessian is not the curvature: the exact Hessian is taken at the end.
     """
     program = problem.program("descend", _descend)
-    ends = [
-        np.asarray(program(start, problem.spread, problem.hyper, problem.data)) for start in starts
-    ]
+    ends = [np.asarray(program(start, problem.spread)) for start in starts]
     peaks: list[Peak] = []
     for end in ends:
         near = [p for p in peaks if np.max(np.abs(p.z - end) / problem.spread) < 1e-3]

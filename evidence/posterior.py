@@ -12,8 +12,8 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
-from scipy.special import logsumexp
 
+from evidence.arithmetic import log_sum_exp
 from evidence.complaints import DeclarationError, near_name, sentence
 from evidence.laplace import LOG_2PI, Mode
 from evidence.problem import Problem
@@ -51,7 +51,7 @@ class WeightedDraws:
 
     def resample(self, number: int, seed: int) -> np.ndarray:
         """Draws (number, d) of equal weight, by systematic resampling (Kitagawa 1996)."""
-        share = np.exp(self.log_weights - logsumexp(self.log_weights))
+        share = np.exp(self.log_weights - log_sum_exp(self.log_weights))
         rng = np.random.default_rng([seed, 0xD4A5])
         comb = (np.arange(number) + rng.random()) / number
         chosen = np.searchsorted(np.cumsum(share), comb).clip(max=len(share) - 1)
@@ -95,7 +95,7 @@ class Posterior:
     def mode_weights(self) -> np.ndarray:
         """(modes,) shares of the modes in the Laplace sum."""
         laplace = np.array([mode.laplace for mode in self.modes])
-        return np.exp(laplace - logsumexp(laplace))
+        return np.exp(laplace - log_sum_exp(laplace))
 
     @property
     def refined(self) -> Posterior | None:
@@ -156,7 +156,7 @@ class Posterior:
             for share, m in zip(np.log(self.mode_weights), self.modes, strict=True)
         ]
         jacobian = float(self.problem.prior_part(z).log_jacobian)
-        return float(logsumexp(pieces) - 0.5 * len(z) * LOG_2PI - jacobian)
+        return float(log_sum_exp(pieces) - 0.5 * len(z) * LOG_2PI - jacobian)
 
     @functools.cached_property
     def _table_draws(self) -> dict[str, np.ndarray]:

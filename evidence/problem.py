@@ -15,7 +15,7 @@ import jax
 import jax.numpy as jnp
 import numpy as np
 
-from evidence.compiling import Program, on_device
+from evidence.compiling import Program, as_numpy, on_device
 from evidence.layout import Layout, Named, lay_out, unpack
 from evidence.model import Model, call_flexibly
 from evidence.tables import named_arrays
@@ -148,6 +148,7 @@ class Problem:
             ("layout", *self._key), lambda: self._inspect(hyper, arrays)
         )
         self.hyper, self.data = on_device((hyper, arrays))
+        self._leaves, self._structure = jax.tree_util.tree_flatten((self.hyper, self.data))
         self.density = Density(model, self.layout)
         self.centre, self.spread, self.spread_known = self.layout.prior_scale(hyper, arrays)
         self.start = self.layout.user_start(self.centre, hyper, arrays)
@@ -170,11 +171,27 @@ class Problem:
         """(d,) labels of the coordinates in the user's words, e.g. "log rate"."""
         return self.layout.labels
 
-    def program(self, kind: str, build: Callable[[Density], Callable[..., Any]]) -> Program:
-        """Compiled program of one kind for this candidate and these shapes, kept on the model."""
-        return self.model.programs.get(
-            (kind, *self._key), lambda: Program(build(Density(self.model, self.layout)))
-        )
+    def program(
+        self, kind: str, build: Callable[[Density], Callable[..., Any]]
+    ) -> Callable[..., Any]:
+        """Compiled program of one kind for this candidate and these shapes, kept on the model.
+
+        ``build`` makes a function of (own arguments, hyper, data); what is returned takes its own
+        arguments only and gives JAX arrays.
+        """
+
+        def compiled() -> Program:
+            # hyper and data go in as a flat list: unfolding pytrees in Python costs at each call
+            function, structure = build(Density(self.model, self.layout)), self._structure
+
+            def flat(own: tuple[Any, ...], leaves: list[Any]) -> Any:
+                return function(*own, *jax.tree_util.tree_unflatten(structure, leaves))
+
+            flat.__name__ = f"evidence_{kind}"  # a part of the key of the compile cache
+            return Program(flat)
+
+        program = self.model.programs.get((kind, *self._key), compiled)
+        return lambda *own: program(own, self._leaves)
 
     def count_fit(self) -> int:
         """Count this fit; return how many fits of the same shapes went before."""
@@ -185,13 +202,13 @@ class Problem:
     def evaluate(self, z: np.ndarray) -> Evaluation:
         """Log density and derivatives at z (d,), as NumPy arrays."""
         self.evaluations += 1
-        packed = np.asarray(self.program("evaluate", _evaluate)(z, self.hyper, self.data))
+        packed = np.asarray(self.program("evaluate", _evaluate)(z))
         d = self.dim
         return Evaluation(packed[0], packed[1 : d + 1], packed[d + 1 :].reshape(d, d))
 
     def prior_part(self, z: np.ndarray) -> PriorPart:
         """What does not come from the data at z (d,), as NumPy arrays."""
-        part = self.program("prior", _prior_part).numpy(z, self.hyper, self.data)
+        part = as_numpy(self.program("prior", _prior_part)(z))
         return part._replace(values=self._in_order(part.values))
 
     def likelihood_part(self, z: np.ndarray) -> Evaluation:
@@ -220,7 +237,7 @@ class Problem:
         for first in range(0, len(z), rows):
             piece = z[first : first + rows]
             padded = np.concatenate([piece, np.repeat(piece[-1:], rows - len(piece), axis=0)])
-            out[first : first + rows] = program(padded, self.hyper, self.data)[: len(piece)]
+            out[first : first + rows] = np.asarray(program(padded))[: len(piece)]
         self._cost = (time.perf_counter() - began) / max(len(z), 1)
         self.evaluations += len(z)
         return np.where(np.isnan(out), -np.inf, out)
@@ -246,7 +263,7 @@ class Problem:
         """Values in natural units at z (d,), or at draws (n, d): name -> (n, *shape)."""
         z = np.asarray(z, dtype=np.float64)
         single = z.ndim == 1
-        values = self.program("natural", _natural).numpy(np.atleast_2d(z), self.hyper, self.data)
+        values = as_numpy(self.program("natural", _natural)(np.atleast_2d(z)))
         return {k: v[0] if single else v for k, v in self._in_order(values).items()}
 
 
