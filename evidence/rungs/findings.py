@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
 
 import numpy as np
 
@@ -12,8 +12,9 @@ from evidence.rungs.probes import FarEnds, Probes, name_axis
 from evidence.rungs.record import Mode, Target
 
 __all__ = [
-    "describe_probes",
+    "describe_ends",
     "describe_prior_held",
+    "describe_probes",
     "describe_spike",
     "describe_unreached_width",
     "missing_spread",
@@ -36,10 +37,10 @@ Warned = tuple[str, str]
 
 
 def describe_probes(
-    target: Target, modes: Sequence[Mode], probes: Sequence[Probes], ends: FarEnds
+    target: Target, modes: Sequence[Mode], probes: Sequence[Probes]
 ) -> list[Warned]:
-    """Name walls, kinks, unbounded and endless directions."""
-    found = list(_describe_ends(target, ends))
+    """Name the walls and kinks beside the leading mode."""
+    found = []
     for mode, seen in zip(modes[:1], probes[:1], strict=True):
         if seen.wall.any():
             found.append(_wall(_named(mode, seen.wall, target)))
@@ -48,20 +49,27 @@ def describe_probes(
     return found
 
 
-def _describe_ends(target: Target, ends: FarEnds) -> Iterator[Warned]:
+def describe_ends(target: Target, ends: FarEnds) -> list[Warned]:
+    """Name the coordinates along which the density has no finite integral."""
+    names, found = np.array(target.names), []
     if ends.rising.any():
-        where = ", ".join(np.array(target.names)[ends.rising])
-        yield (
-            f"the log density keeps rising along {where}: it is unbounded, and no number "
-            "from it can be trusted",
-            UNBOUNDED_REMEDY,
+        where = ", ".join(names[ends.rising][:4])
+        found.append(
+            (
+                f"the log density keeps rising along {where}: it is unbounded, and no number "
+                "from it can be trusted",
+                UNBOUNDED_REMEDY,
+            )
         )
     if ends.flat.any():
-        where = ", ".join(np.array(target.names)[ends.flat])
-        yield (
-            f"the log density does not fall off along {where}: its integral may be infinite",
-            f"give {where} a proper prior",
+        where = ", ".join(names[ends.flat][:4])
+        found.append(
+            (
+                f"the log density does not fall off along {where}: its integral may be infinite",
+                f"give {where} a proper prior",
+            )
         )
+    return found
 
 
 def _named(mode: Mode, mask: np.ndarray, target: Target) -> str:
@@ -153,7 +161,8 @@ def unseen_mass(target: Target, modes: Sequence[Mode], sample: Sample) -> list[W
     return [
         (
             f"about {100 * share:.0f} % of the mass lies far from the modes found, near {where}",
-            "give a start near there: another peak, a heavy tail or a curved ridge was not followed",
+            "give a start near there: another peak, a heavy tail or a curved ridge was not "
+            "followed",
         )
     ]
 

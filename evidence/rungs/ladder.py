@@ -24,22 +24,23 @@ DEPTHS = {"quick": 0, "standard": 2, "thorough": 4}  # methods after the first r
 SECONDS_ASKED = 60.0
 UNBOUNDED = (Outcome.RUNAWAY, Outcome.INFINITE)
 RISE_ALLOWED = 1e-6
+WEAK_K = 0.7
 
 
 class Metered:
     """A target that counts its evaluations and remembers whether +inf was seen."""
 
     def __init__(self, target: Target) -> None:
-        self._target = target
+        self.inner = target
         self.evaluations = 0
         self.infinite = False
 
     def __getattr__(self, name: str) -> object:
-        return getattr(self._target, name)
+        return getattr(self.inner, name)
 
     def batch(self, z: np.ndarray) -> np.ndarray:
         """Log density [n] at points [n, d]; nan counts as -inf."""
-        values = np.asarray(self._target.batch(z), dtype=float)
+        values = np.asarray(self.inner.batch(z), dtype=float)
         self.evaluations += len(z)
         self.infinite = self.infinite or bool(np.isposinf(values).any())
         return np.where(np.isnan(values), -np.inf, values)
@@ -136,21 +137,22 @@ def _usable(modes: Sequence[Mode], target: Target) -> tuple[Mode, ...]:
 def _without_peak(modes: Sequence[Mode]) -> Audit:
     """Report that there is nothing to check."""
     statuses = [Outcome(m.status) for m in modes if m.status != Outcome.OK]
-    infinite = any(np.isposinf(m.log_density) for m in modes)
     reason = statuses[0] if statuses else Outcome.NOT_FINITE
-    return _failed(Outcome.INFINITE if infinite else reason)
+    if any(np.isposinf(m.log_density) for m in modes):
+        reason = Outcome.INFINITE
+    return _failed(reason.sentence, reason.remedy)
 
 
-def _failed(reason: Outcome, rungs: tuple[Rung, ...] = ()) -> Audit:
+def _failed(sentence_: str, remedy: str, rungs: tuple[Rung, ...] = ()) -> Audit:
     return Audit(
         rungs=rungs,
         log_evidence=float("nan"),
         standard_error=float("nan"),
         trust="failed",
-        warnings=((reason.sentence, reason.remedy),),
+        warnings=((sentence_, remedy),),
         draws=None,
         log_weights=None,
-        stopped_because=reason.sentence,
+        stopped_because=sentence_,
     )
 
 
@@ -190,6 +192,9 @@ class _Ascent:
         standing = self._stand()
         if self._try(lambda: methods.check_expansion(standing)):
             return
+        if self._endless():
+            self.stopped = "the density has no finite integral that draws could find"
+            return
         if self._try(lambda: self._check_large(standing)):
             return
         for method in methods.METHODS[:steps]:
@@ -203,7 +208,7 @@ class _Ascent:
     def _stand(self) -> methods.Standing:
         """Probe every mode and build the proposal."""
         self.probes = tuple(probe(self.target, m) for m in self.modes)
-        self.ends = probe_far_ends(self.target, self.modes[0])
+        self.ends = probe_far_ends(self.target.inner, self.modes[0])
         return methods.Standing(
             target=self.target,
             modes=self.modes,
@@ -272,7 +277,9 @@ class _Ascent:
         """Decide estimate, error, trust and warnings."""
         rungs = tuple(a.rung for a in self.attempts)
         if self.target.infinite or any(m.status == Outcome.INFINITE for m in self.modes):
-            return _failed(Outcome.INFINITE, rungs)
+            return _failed(Outcome.INFINITE.sentence, Outcome.INFINITE.remedy, rungs)
+        if self._endless():
+            return _failed(*findings.describe_ends(self.target, self.ends)[0], rungs)
         verdict = self._verdict()
         told = self._warnings(verdict)
         accepted = bool(self.attempts) and self.attempts[-1].accepted
@@ -298,7 +305,7 @@ class _Ascent:
 
     def _doubts(self, verdict: Verdict) -> bool:
         """Say whether the methods are known to be blind here, whatever they agree on."""
-        blind = not self.target.spread_known or self._unbounded()
+        blind = not self.target.spread_known or any(m.status in UNBOUNDED for m in self.modes)
         return blind or any(self._doubtful_findings(s) for s in self._samples(verdict))
 
     def _doubtful_findings(self, sample: Sample) -> list[tuple[str, str]]:
@@ -306,25 +313,21 @@ class _Ascent:
         needles = (findings.describe_spike(self.target, m, sample) for m in self.modes)
         return wide + [told for needle in needles for told in needle]
 
-    def _unbounded(self) -> bool:
-        runs_off = any(m.status in UNBOUNDED for m in self.modes)
-        ends = self.ends is not None and (self.ends.rising.any() or self.ends.flat.any())
-        return bool(runs_off or ends)
+    def _endless(self) -> bool:
+        """Say whether the density was seen to rise without end, or not to fall off."""
+        return self.ends is not None and bool(self.ends.rising.any() or self.ends.flat.any())
 
     def _warnings(self, verdict: Verdict) -> list[tuple[str, str]]:
-        told = []
-        for reason in dict.fromkeys(Outcome(m.status) for m in self.modes):
-            if reason != Outcome.OK:
-                told.append((reason.sentence, reason.remedy))
-        if self.ends is not None:
-            told += findings.describe_probes(self.target, self.modes, self.probes, self.ends)
-        told += findings.describe_prior_held(self.target, self.modes[0])
+        told = findings.describe_probes(self.target, self.modes, self.probes)
         if not self.target.spread_known:
             told.append(findings.missing_spread())
+        doubtful = [d for s in self._samples(verdict) for d in self._doubtful_findings(s)]
+        if doubtful:
+            return told + doubtful
+        told += findings.describe_prior_held(self.target, self.modes[0])
         for sample in self._samples(verdict):
             told += findings.unseen_mass(self.target, self.modes, sample)
-            told += self._doubtful_findings(sample)
-            if sample.pareto_k > 0.7:
+            if sample.pareto_k > WEAK_K:
                 told.append(findings.weak_weights(self.target, sample))
         return told
 

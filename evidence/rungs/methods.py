@@ -23,6 +23,8 @@ LARGE_DIM = 20
 FIRST_DRAWS, SECOND_DRAWS = 1024, 8192
 ROUND_DRAWS, FINAL_DRAWS = 3000, 8192
 MORE = 4.6
+REPLICATED = 8
+COMPONENTS = {3: 8, 4: 16}  # learned on each of the adaptive rungs
 PARTICLES, REPLICATES = 2000, 4
 
 
@@ -136,12 +138,12 @@ def draw_more(standing: Standing, before: Attempt) -> Attempt:
     )  # fmt: skip
 
 
-def adapt(standing: Standing, before: Attempt) -> Attempt:
+def adapt(standing: Standing, _before: Attempt) -> Attempt:
     """Rung 3: an adaptive mixture, run with and without the part on the prior's scale."""
     return _adapt_twice(standing, 3, 1.0, largest_k=0.6, largest_error=0.03)
 
 
-def adapt_longer(standing: Standing, before: Attempt) -> Attempt:
+def adapt_longer(standing: Standing, _before: Attempt) -> Attempt:
     """Rung 4: the same with 4.6 times the draws."""
     return _adapt_twice(standing, 4, MORE, largest_k=0.7, largest_error=np.inf)
 
@@ -151,10 +153,13 @@ def _adapt_twice(
 ) -> Attempt:
     def run(start: Mixture, repetition: int) -> Sample:
         return sample_adapted(
-            standing.target, start, standing.rng(stream, repetition),
-            draws_per_round=int(ROUND_DRAWS * factor), final_draws=int(FINAL_DRAWS * factor) // 8 * 8,
-            size=8 if stream == 3 else 16,
-        )  # fmt: skip
+            standing.target,
+            start,
+            standing.rng(stream, repetition),
+            draws_per_round=int(ROUND_DRAWS * factor),
+            final_draws=int(FINAL_DRAWS * factor) // REPLICATED * REPLICATED,
+            size=COMPONENTS[stream],
+        )
 
     wide = run(standing.mixture, 0)
     second = run(standing.mixture.narrow(), 1)
@@ -174,7 +179,7 @@ def _adapt_twice(
     )  # fmt: skip
 
 
-def follow_path(standing: Standing, before: Attempt) -> Attempt:
+def follow_path(standing: Standing, _before: Attempt) -> Attempt:
     """Rung 5: sequential Monte Carlo, and draws of a mixture fitted to its particles."""
     path = run_sequential(
         standing.target, standing.mixture, standing.seed, replicates=REPLICATES,

@@ -92,7 +92,7 @@ def _matched_scales(drop: np.ndarray, steps: np.ndarray) -> np.ndarray:
     """Scale [side, axis] of the normal density that has the same drop two sd out."""
     root = np.sqrt(2.0 * np.maximum(drop, 0.0))
     root = np.minimum(np.where(np.isfinite(root), root, 50.0), 50.0)
-    root = np.concatenate([np.zeros(root.shape[:2] + (1,)), root], axis=2)
+    root = np.concatenate([np.zeros((*root.shape[:2], 1)), root], axis=2)
     grid = np.concatenate([[0.0], steps])
     reached = root >= MATCHED_DROP
     first = np.where(reached.any(axis=2), reached.argmax(axis=2), len(grid) - 1)
@@ -117,13 +117,15 @@ def _kinked(drop: np.ndarray) -> np.ndarray:
 def probe_far_ends(target: Target, mode: Mode) -> FarEnds:
     """Look along every coordinate, 100 to 10 000 prior sd from a mode, for a density that stays.
 
-    A proper posterior has lost several nats there even with the heaviest usual tails.
+    A proper posterior has lost several nats there even with the heaviest usual tails. Values of
+    +inf are left out: so far away they come from a scale that underflows to zero.
     """
     d = target.dim
     offsets = np.concatenate([-FAR, FAR])
     points = mode.z + np.einsum("s,ij->sij", offsets, np.diag(target.spread))
     values = target.batch(points.reshape(-1, d)).reshape(2, len(FAR), d)
-    rising = (values >= mode.log_density + 1.0).any(axis=(0, 1)) | np.isposinf(values).any((0, 1))
+    values = np.where(np.isposinf(values), -np.inf, values)
+    rising = (values >= mode.log_density + 1.0).any(axis=(0, 1))
     with np.errstate(invalid="ignore"):
         flat = (values[:, 0] - values[:, -1] < FLAT_WITHIN) & np.isfinite(values[:, -1])
     return FarEnds(rising=rising, flat=flat.any(axis=0) & ~rising)

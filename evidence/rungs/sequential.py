@@ -177,7 +177,7 @@ def _run(log_density: Callable, key: object, x: object, parts: _Parts) -> _State
     from jax import lax
 
     log_f, log_q = _both_ends(log_density, parts)
-    n, d = x.shape
+    d = x.shape[1]
     zero = jnp.zeros(())
     start = _State(x, zero, zero, jnp.asarray(0.5 / d**0.25), key, jnp.asarray(0), zero, zero)
 

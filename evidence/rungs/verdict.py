@@ -13,7 +13,7 @@ from evidence.rungs.record import Rung
 __all__ = ["Attempt", "Verdict", "best_available", "trust_word"]
 
 SOUND_BAR = 0.1  # nats: three standard errors, and distance of plain Laplace
-TRUSTED_K, USABLE_K = 0.5, 0.7
+TRUSTED_K, USABLE_K, WORST_K = 0.5, 0.7, 5.0
 COMPARABLE = 0.1
 
 
@@ -44,7 +44,7 @@ class Attempt:
             return error
         if self.pareto_k <= USABLE_K:
             return 2.0 * error
-        return max(3.0 * error, 0.1 + 0.5 * (self.pareto_k - USABLE_K))
+        return max(3.0 * error, 0.1 + 0.5 * (min(self.pareto_k, WORST_K) - USABLE_K))
 
 
 @dataclass(frozen=True, kw_only=True)
