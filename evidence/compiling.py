@@ -27,6 +27,7 @@ __all__ = ["Program", "as_numpy", "float64", "on_device"]
 
 CACHE_VARIABLE = "EVIDENCE_COMPILE_CACHE"
 _LOCK = threading.RLock()
+_HASTY = {"xla_backend_optimization_level": 0, "xla_llvm_disable_expensive_passes": True}
 _NOISY_LOGGERS = ("jax._src.compiler", "jax._src.compilation_cache", "jax._src.lru_cache")
 
 
@@ -53,10 +54,15 @@ class Program:
     ----------
     function : callable
         Traceable; takes and returns pytrees of arrays. Its name is part of the cache's key.
+    hasty : bool
+        Compile in about half the time to code that runs somewhat slower: for small problems,
+        whose first answer is all compilation.
     """
 
-    def __init__(self, function: Callable[..., Any]) -> None:
-        self._jitted = jax.jit(function)
+    def __init__(self, function: Callable[..., Any], *, hasty: bool = False) -> None:
+        self._function = function
+        self._jitted = jax.jit(function, compiler_options=_HASTY if hasty else None)
+        self._hasty = hasty
         self._compiled = False
 
     def __call__(self, *arguments: Any) -> Any:
@@ -65,9 +71,19 @@ class Program:
             if self._compiled:
                 return self._jitted(*arguments)
             with _LOCK, _persistent_cache():
-                result = self._jitted(*arguments)
+                result = self._first_call(*arguments)
             self._compiled = True
             return result
+
+    def _first_call(self, *arguments: Any) -> Any:
+        try:
+            return self._jitted(*arguments)
+        except jax.errors.JaxRuntimeError:
+            if not self._hasty:
+                raise
+            # another compiler may not know the options
+            self._hasty, self._jitted = False, jax.jit(self._function)
+            return self._jitted(*arguments)
 
 
 def cache_directory() -> Path | None:

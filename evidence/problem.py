@@ -25,6 +25,8 @@ __all__ = ["Density", "Evaluation", "PriorPart", "Problem", "derivatives"]
 
 BATCH_ROWS = 1024
 BATCH_TERMS = 4_000_000  # rows x terms held at once
+HASTY_KINDS = ("evaluate", "prior", "natural")
+SMALL = 20_000  # numbers in the data up to which hasty compilation is the better bargain
 
 
 class Evaluation(NamedTuple):
@@ -162,6 +164,11 @@ class Problem:
         return layout, terms, (*self.reading.float32, *float32)
 
     @property
+    def _is_small(self) -> bool:
+        numbers = sum(np.size(leaf) for leaf in self._leaves)
+        return numbers * max(self.dim, 1) <= 10 * SMALL and numbers <= SMALL
+
+    @property
     def dim(self) -> int:
         """Number of unconstrained coordinates d."""
         return self.layout.dim
@@ -188,7 +195,7 @@ class Problem:
                 return function(*own, *jax.tree_util.tree_unflatten(structure, leaves))
 
             flat.__name__ = f"evidence_{kind}"  # a part of the key of the compile cache
-            return Program(flat)
+            return Program(flat, hasty=kind in HASTY_KINDS and self._is_small)
 
         program = self.model.programs.get((kind, *self._key), compiled)
         return lambda *own: program(own, self._leaves)
