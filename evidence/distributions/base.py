@@ -32,11 +32,11 @@ def as_floats(*values: Any) -> list[jax.Array]:
 
 
 def where_allowed(forbidden: Any, value: jax.Array) -> jax.Array:
-    """Return the log density, and -inf with zero gradient where x is forbidden.
+    """Return the log density; -inf with zero gradient where x is forbidden or the density zero.
 
     ``value`` must have been computed with a harmless x there, or its derivatives are nan.
     """
-    return jnp.where(forbidden, -jnp.inf, value)
+    return jnp.where(forbidden | (value == -jnp.inf), -jnp.inf, value)
 
 
 @dataclasses.dataclass(frozen=True, eq=False, repr=False)

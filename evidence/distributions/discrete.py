@@ -10,12 +10,12 @@ from typing import Any
 
 import jax
 import jax.numpy as jnp
-from jax.scipy.special import gammaln
 
 from evidence.complaints import DeclarationError, sentence
 from evidence.distributions.base import Distribution, where_allowed
+from evidence.distributions.coordinates import log_sigmoid
 from evidence.distributions.fields import declared, hyper
-from evidence.distributions.special import log_binomial, log_rising, power_log
+from evidence.distributions.special import log_binomial, log_gamma, log_rising, power_log
 from evidence.distributions.supports import Discrete, discrete
 
 __all__ = ["Bernoulli", "Binomial", "NegativeBinomial", "Poisson"]
@@ -53,7 +53,7 @@ def scaled(count: jax.Array, value: jax.Array) -> jax.Array:
 def log_successes(yes: jax.Array, no: jax.Array, chance: jax.Array, is_logit: bool) -> jax.Array:
     """Return yes log p + no log(1 - p), from the probability or from its logit."""
     if is_logit:
-        return -scaled(yes, jax.nn.softplus(-chance)) - scaled(no, jax.nn.softplus(chance))
+        return scaled(yes, log_sigmoid(chance, jnp)) + scaled(no, log_sigmoid(-chance, jnp))
     # log1p keeps the digits of a small p, which 1 - p would round away
     certain = chance == 1
     rest = no * jnp.log1p(-jnp.where(certain, 0.0, chance))
@@ -145,10 +145,12 @@ class Poisson(CountDistribution):
         forbidden = (x < 0) | (x != jnp.floor(x))
         x = jnp.where(forbidden, 0.0, x)
         if self.rate is None:
+            overflow = jnp.isinf(jnp.exp(level)) & (level > 0)
+            forbidden, level = forbidden | overflow, jnp.where(overflow, 0.0, level)
             value = scaled(x, level) - jnp.exp(level)
         else:
             value = power_log(x, level) - level
-        return where_allowed(forbidden, value - gammaln(x + 1.0))
+        return where_allowed(forbidden, value - log_gamma(x + 1.0))
 
     def sample(self, key: jax.Array, sample_shape: tuple[int, ...] = ()) -> jax.Array:
         shape, level = self._for_draws(sample_shape)
@@ -176,7 +178,7 @@ class NegativeBinomial(CountDistribution):
         x, mean, size = self._floats(x)
         forbidden = (x < 0) | (x != jnp.floor(x))
         x = jnp.where(forbidden, 0.0, x)
-        ways = log_rising(size, x) - gammaln(x + 1.0)
+        ways = log_rising(size, x) - log_gamma(x + 1.0)
         value = power_log(x, mean) - x * jnp.log(mean + size) - size * jnp.log1p(mean / size)
         return where_allowed(forbidden, ways + value)
 

@@ -12,13 +12,14 @@ from typing import Any
 import jax
 import jax.numpy as jnp
 import numpy as np
-from jax.scipy.special import gammaln
 
 from evidence.distributions.base import CentreSpread, Distribution, where_allowed
+from evidence.distributions.coordinates import log_sigmoid
 from evidence.distributions.fields import declared, hyper
 from evidence.distributions.special import (
     HALF_LOG_2PI,
     log1p_square,
+    log_gamma,
     log_gamma_centre,
     normal_log_density,
     power_log,
@@ -126,13 +127,13 @@ class Gamma(Distribution):
         x, alpha, rate = self._floats(x)
         below = x < 0
         x = jnp.where(below, 1.0, x)
-        constant = alpha * jnp.log(rate) - gammaln(alpha)
+        constant = alpha * jnp.log(rate) - log_gamma(alpha)
         return where_allowed(below, power_log(alpha - 1.0, x) - rate * x + constant)
 
     def log_prob_z(self, z: Any) -> jax.Array:
         z, alpha, rate = self._floats(z)
         u = z + jnp.log(rate)
-        return alpha * u - jnp.exp(u) - gammaln(alpha)
+        return alpha * u - jnp.exp(u) - log_gamma(alpha)
 
     def sample(self, key: jax.Array, sample_shape: tuple[int, ...] = ()) -> jax.Array:
         shape, alpha, rate = self._for_draws(sample_shape)
@@ -167,14 +168,14 @@ class InverseGamma(Distribution):
         x, alpha, scale = self._floats(x)
         forbidden = x <= 0
         x = jnp.where(forbidden, 1.0, x)
-        constant = alpha * jnp.log(scale) - gammaln(alpha)
+        constant = alpha * jnp.log(scale) - log_gamma(alpha)
         value = constant - (alpha + 1.0) * jnp.log(x) - scale / x
         return where_allowed(forbidden, value)
 
     def log_prob_z(self, z: Any) -> jax.Array:
         z, alpha, scale = self._floats(z)
         u = jnp.log(scale) - z
-        return alpha * u - jnp.exp(u) - gammaln(alpha)
+        return alpha * u - jnp.exp(u) - log_gamma(alpha)
 
     def sample(self, key: jax.Array, sample_shape: tuple[int, ...] = ()) -> jax.Array:
         shape, alpha, scale = self._for_draws(sample_shape)
@@ -247,7 +248,7 @@ class HalfCauchy(Distribution):
     def log_prob_z(self, z: Any) -> jax.Array:
         z, scale = self._floats(z)
         u = z - jnp.log(scale)
-        return math.log(2.0 / math.pi) + u - jnp.logaddexp(0.0, 2.0 * u)
+        return math.log(2.0 / math.pi) + u + log_sigmoid(-2.0 * u, jnp)
 
     def sample(self, key: jax.Array, sample_shape: tuple[int, ...] = ()) -> jax.Array:
         shape, scale = self._for_draws(sample_shape)

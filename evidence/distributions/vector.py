@@ -8,12 +8,11 @@ import jax
 import jax.numpy as jnp
 import numpy as np
 from jax.scipy.linalg import solve_triangular
-from jax.scipy.special import gammaln
 
 from evidence.complaints import DeclarationError, sentence
 from evidence.distributions.base import CentreSpread, Distribution, as_floats, where_allowed
 from evidence.distributions.fields import declared, hyper, is_number
-from evidence.distributions.special import HALF_LOG_2PI, log_gamma_centre, power_log
+from evidence.distributions.special import HALF_LOG_2PI, log_gamma, log_gamma_centre, power_log
 from evidence.distributions.supports import Real, Simplex, real, simplex
 
 __all__ = ["Dirichlet", "MultivariateNormal"]
@@ -57,17 +56,18 @@ class Dirichlet(VectorDistribution):
         return simplex
 
     def _constant(self, concentration: jax.Array) -> jax.Array:
-        total = gammaln(jnp.sum(concentration, axis=-1))
-        return total - jnp.sum(gammaln(concentration), axis=-1)
+        total = log_gamma(jnp.sum(concentration, axis=-1))
+        return total - jnp.sum(log_gamma(concentration), axis=-1)
 
     def log_prob(self, x: Any) -> jax.Array:
         x, concentration = as_floats(self._vector(x), self.concentration)
         outside = jnp.abs(jnp.sum(x, axis=-1) - 1.0) > SUM_TOLERANCE
         outside = outside | jnp.any(x < 0, axis=-1)
         x = jnp.where(outside[..., None], 1.0, x)
-        # zero with a negative power beside zero with a positive one: inf - inf; x is then outside
-        powers = jnp.sum(power_log(concentration - 1.0, x), axis=-1)
+        # a zero with a negative power beside one with a positive power would be inf - inf
         vanishes = jnp.any((x == 0) & (concentration > 1.0), axis=-1)
+        x = jnp.where(vanishes[..., None], 1.0, x)
+        powers = jnp.sum(power_log(concentration - 1.0, x), axis=-1)
         return where_allowed(outside | vanishes, powers + self._constant(concentration))
 
     def log_prob_z(self, z: Any) -> jax.Array:
