@@ -7,12 +7,14 @@ kept under a fingerprint of everything its functions read.
 
 from __future__ import annotations
 
+import collections
 import dataclasses
 import functools
 import hashlib
+import itertools
 import sys
 import types
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Iterator
 from typing import Any
 
 import numpy as np
@@ -21,9 +23,12 @@ __all__ = ["Reading", "read_functions"]
 
 HASHED_BYTES = 64 * 2**20  # larger arrays go by identity and a sample
 SAMPLED_ITEMS = 4096
-DEPTH_LIMIT = 8
+DEPTH_LIMIT = 60
 OWN_PACKAGE = __name__.split(".")[0]
+ARRAY_LIBRARIES = frozenset({"jax", "numpy", "scipy"})
 _PLAIN = (type(None), bool, int, float, complex, str, bytes)
+_SEQUENCES = (list, tuple, set, frozenset, collections.deque)
+_UNREADABLE = itertools.count()
 
 
 @dataclasses.dataclass(frozen=True, kw_only=True)
@@ -37,25 +42,39 @@ class Reading:
         by their bytes, functions of the user's by their code, the rest by identity.
     float32 : tuple of str
         Names of the float32 arrays found, which cost half of the digits.
+    held : tuple of object
+        What went in by identity. Whoever keeps something under the digest keeps the reading, or
+        another object may come to stand at the same address.
     """
 
     digest: str
     float32: tuple[str, ...]
+    held: tuple[Any, ...] = dataclasses.field(default=(), repr=False, compare=False)
 
 
 def read_functions(functions: Iterable[Callable[..., Any] | None]) -> Reading:
     """Fingerprint some functions with their closures, defaults and globals."""
-    reader = _Reader()
+    functions = list(functions)
+    reader = _Reader(functions)
     for function in functions:
         reader.read(function, "", 0)
-    return Reading(digest=reader.hash.hexdigest(), float32=tuple(dict.fromkeys(reader.float32)))
+    return Reading(
+        digest=reader.hash.hexdigest(),
+        float32=tuple(dict.fromkeys(reader.float32)),
+        held=tuple(reader.held),
+    )
 
 
 class _Reader:
-    def __init__(self) -> None:
+    def __init__(self, functions: Iterable[Any]) -> None:
         self.hash = hashlib.sha256()
         self.float32: list[str] = []
-        self.seen: set[int] = set()
+        # number and object by address; held, so that no address is used twice
+        self.seen: dict[int, tuple[int, Any]] = {}
+        self.held: list[Any] = []
+        # a user's package is the user's own also where it is installed
+        roots = {_root(getattr(function, "__module__", None)) for function in functions}
+        self.homes = roots - ARRAY_LIBRARIES - {OWN_PACKAGE, ""}
 
     def add(self, *parts: object) -> None:
         for part in parts:
@@ -67,13 +86,23 @@ class _Reader:
             self.add(type(value).__name__, value)
         elif isinstance(value, (np.ndarray, np.generic)) or _is_jax_array(value):
             self.read_array(value, name)
-        elif id(value) in self.seen or depth > DEPTH_LIMIT:
-            self.add("again", type(value).__name__)
+        elif id(value) in self.seen:
+            self.add("again", self.seen[id(value)][0])
         elif isinstance(value, types.ModuleType):
             self.add("module", value.__name__)
+        elif depth > DEPTH_LIMIT:
+            self.add("too deep to read", next(_UNREADABLE))  # never equal: traced again
         else:
-            self.seen.add(id(value))
+            self.seen[id(value)] = (len(self.seen), value)
             self.read_object(value, name, depth)
+
+    def identify(self, value: Any) -> None:
+        """Add an object by its identity, and keep it from being freed."""
+        self.held.append(value)
+        self.add(id(value))
+
+    def is_users(self, module: str | None) -> bool:
+        return _root(module) in self.homes or _is_users(module)
 
     def read_array(self, value: Any, name: str) -> None:
         array = np.asarray(value)
@@ -81,12 +110,12 @@ class _Reader:
         if array.dtype == np.float32:
             self.float32.append(name or "an unnamed constant")
         if array.dtype == object:
-            self.add([id(x) for x in array.ravel()])
+            self.read(array.ravel().tolist(), name, 1)
         elif array.nbytes <= HASHED_BYTES:
             self.hash.update(np.ascontiguousarray(array).tobytes())
         else:
             stride = max(1, array.size // SAMPLED_ITEMS)
-            self.add(id(value))
+            self.identify(value)
             self.hash.update(np.ascontiguousarray(array.ravel()[::stride]).tobytes())
 
     def read_object(self, value: Any, name: str, depth: int) -> None:
@@ -97,7 +126,11 @@ class _Reader:
             self.read(value.__self__, name, depth + 1)
         elif isinstance(value, functools.partial):
             self.read([value.func, value.args, value.keywords], name, depth + 1)
-        elif isinstance(value, (list, tuple, set, frozenset)):
+        elif isinstance(value, property):
+            self.read([value.fget, value.fset], name, depth + 1)
+        elif isinstance(value, functools.cached_property):
+            self.read(value.func, name, depth + 1)
+        elif isinstance(value, _SEQUENCES):
             items = sorted(value, key=repr) if isinstance(value, (set, frozenset)) else value
             self.add(type(value).__name__, len(value))
             for index, item in enumerate(items):
@@ -105,31 +138,47 @@ class _Reader:
         elif isinstance(value, dict):
             self.add("dict", len(value))
             for key, item in value.items():
-                self.add(key if isinstance(key, _PLAIN) else id(key))
+                self.read(key, name, depth + 1)
                 self.read(item, f"{name}[{key!r}]", depth + 1)
-        elif hasattr(value, "__wrapped__"):  # jitted or decorated
-            self.read(value.__wrapped__, name, depth + 1)
+        elif not isinstance(value, type) and hasattr(type(value), "__array__"):
+            self.read_table(value, name, depth)
         else:
+            if hasattr(value, "__wrapped__"):  # jitted or decorated
+                self.read(value.__wrapped__, name, depth + 1)
             self.read_instance(value, name, depth)
+
+    def read_table(self, value: Any, name: str, depth: int) -> None:
+        """A DataFrame, a Series or another array-like: by what it holds, which may change."""
+        self.identify(value)
+        try:
+            content = np.asarray(value)
+            labels = [str(x) for x in getattr(value, "columns", ())]
+        except (TypeError, ValueError):
+            return
+        self.add(labels)
+        self.read(content, name, depth + 1)
 
     def read_instance(self, value: Any, name: str, depth: int) -> None:
         """An object: by identity, and by its attributes where its class is the user's own."""
         is_class = isinstance(value, type)
         owner = value if is_class else type(value)
-        self.add("object", owner.__qualname__, id(value))
-        if not _is_users(owner.__module__):
+        self.add("object", owner.__qualname__)
+        self.identify(value)
+        # a library's object stands for itself; a plain bag of values of Python's own does not
+        if not self.is_users(owner.__module__) and not isinstance(value, types.SimpleNamespace):
             return
-        if not is_class:
-            self.read(owner, name, depth + 1)
-        for key, item in getattr(value, "__dict__", {}).items():
-            if not key.startswith("__") or key == "__call__":
-                self.add(key)
-                self.read(item, f"{name}.{key}", depth + 1)
+        for base in owner.__mro__[1:] if is_class else (owner,):
+            if self.is_users(base.__module__):
+                self.read(base, name, depth + 1)
+        for key, item in _attributes(value):
+            self.add(key)
+            self.read(item, f"{name}.{key}", depth + 1)
 
     def read_function(self, function: types.FunctionType, depth: int) -> None:
         self.add("function", function.__qualname__)
-        if not _is_users(function.__module__):
-            self.add(function.__module__, id(function))
+        if not self.is_users(function.__module__):
+            self.add(function.__module__)
+            self.identify(function)
             return
         self.read_code(function.__code__)
         for name, cell in zip(
@@ -141,10 +190,31 @@ class _Reader:
                 self.add("unbound", name)
         self.read(list(function.__defaults__ or ()), "default", depth + 1)
         self.read(function.__kwdefaults__ or {}, "default", depth + 1)
-        for name in sorted(_global_names(function.__code__)):
-            if name in function.__globals__:
+        names = sorted(_global_names(function.__code__))
+        for name in names:
+            # a name that is no global may be imported inside the function
+            value = function.__globals__.get(name, sys.modules.get(name))
+            if name in function.__globals__ or value is not None:
                 self.add(name)
-                self.read(function.__globals__[name], name, depth + 1)
+                self.read(value, name, depth + 1)
+                self.read_module(value, names, depth)
+
+    def read_module(self, module: Any, names: Iterable[str], depth: int) -> None:
+        """Attributes of a module of the user's own, and of those inside, that a function names."""
+        modules, done = [module], set()
+        while modules:
+            module = modules.pop()
+            if not isinstance(module, types.ModuleType) or id(module) in done:
+                continue
+            done.add(id(module))
+            if not self.is_users(module.__name__):
+                continue
+            for name in names:
+                if name in vars(module):
+                    value = vars(module)[name]
+                    self.add(name)
+                    self.read(value, f"{module.__name__}.{name}", depth + 1)
+                    modules.append(value)
 
     def read_code(self, code: types.CodeType) -> None:
         self.add(code.co_code, code.co_names, code.co_varnames, code.co_freevars)
@@ -162,6 +232,24 @@ def _global_names(code: types.CodeType) -> set[str]:
         if isinstance(constant, types.CodeType):
             names |= _global_names(constant)
     return names
+
+
+def _attributes(value: Any) -> Iterator[tuple[str, Any]]:
+    """Names and values that a user's object or class carries, in its dict and in its slots."""
+    for key, item in list(getattr(value, "__dict__", {}).items()):
+        dunder = key.startswith("__") and key.endswith("__")
+        if not dunder or isinstance(item, types.FunctionType):
+            yield key, item
+    if not isinstance(value, type):
+        for base in type(value).__mro__:
+            slots = vars(base).get("__slots__", ())
+            for key in (slots,) if isinstance(slots, str) else slots:
+                if hasattr(value, key) and not key.startswith("__"):
+                    yield key, getattr(value, key)
+
+
+def _root(module: str | None) -> str:
+    return (module or "").split(".")[0]
 
 
 def _is_users(module: str | None) -> bool:

@@ -145,7 +145,7 @@ class Problem:
         self.arrays = named_arrays(data)
         self.reading = model.reading()
         hyper, arrays = model.hyperparameters(), dict(self.arrays)
-        self._key = (self.reading.digest, _signature(hyper), _signature(arrays))
+        self._key = (self.reading, _signature(hyper), _signature(arrays))
         self.layout, self.terms, self.float32 = model.programs.get(
             ("layout", *self._key), lambda: self._inspect(hyper, arrays)
         )
@@ -202,8 +202,9 @@ class Problem:
 
     def count_fit(self) -> int:
         """Count this fit; return how many fits of the same shapes went before."""
-        before = self.model.programs.fits.get(self._key, 0)
-        self.model.programs.fits[self._key] = before + 1
+        key = (self.reading.digest, *self._key[1:])
+        before = self.model.programs.fits.get(key, 0)
+        self.model.programs.fits[key] = before + 1
         return before
 
     def evaluate(self, z: np.ndarray) -> Evaluation:
