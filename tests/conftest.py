@@ -7,6 +7,11 @@ import sys
 
 import pytest
 
+# before NumPy is loaded: its threads and JAX's wait for each other on a machine with few cores,
+# and one eigenvalue problem of dimension 100 then takes 100 ms in place of 3
+for _variable in ("OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
+    os.environ.setdefault(_variable, "1")
+
 
 def pytest_addoption(parser):
     parser.addoption("--slow", action="store_true", help="also run the tests that take minutes")
