@@ -41,7 +41,7 @@ def describe_probes(
 ) -> list[Warned]:
     """Name the walls and kinks beside the leading mode."""
     found = []
-    for mode, seen in zip(modes[:1], probes[:1], strict=True):
+    for mode, seen in zip(modes[:1], probes[:1], strict=False):
         if seen.wall.any():
             found.append(_wall(_named(mode, seen.wall, target)))
         if seen.kink.any():

@@ -13,10 +13,11 @@ from evidence.rungs.proposal import Component, Mixture, component
 from evidence.rungs.record import Mode, Target
 from evidence.rungs.weights import log_mean_exp, relative_error
 
-__all__ = ["Sample", "mode_mixture", "sample_mixture"]
+__all__ = ["Sample", "mode_mixture", "sample_mixture", "summarise", "with_peaks"]
 
 BROAD_SHARE = 0.1
 SMALLEST_SHARE = 0.03
+MOST_LATER = 0.6  # share of peaks that the mode search missed
 REPLICATES = 8
 
 
@@ -46,7 +47,11 @@ class Sample:
     share: float
 
 
-def mode_mixture(modes: Sequence[Mode], probes: Sequence[Probes], target: Target) -> Mixture:
+def mode_mixture(
+    modes: Sequence[Mode],
+    probes: Sequence[Probes],
+    target: Target,
+) -> Mixture:
     """Build the proposal: a split Student-t for each mode, and ten per cent on the prior's scale.
 
     References
@@ -68,6 +73,22 @@ def mode_mixture(modes: Sequence[Mode], probes: Sequence[Probes], target: Target
 
 def _around(mode: Mode, probes: Probes) -> Component:
     return component(mode.z, mode.axes, below=probes.below, above=probes.above)
+
+
+def with_peaks(mixture: Mixture, peaks: Sequence[Component], target: Target) -> Mixture:
+    """Give peaks found later their share of the mixture, by their height and volume."""
+    if not peaks:
+        return mixture
+    centres = np.array([p.centre for p in peaks])
+    heights = target.batch(centres) - np.array([p.log_norm for p in peaks])
+    local = [c for c, b in zip(mixture.components, mixture.broad, strict=True) if not b]
+    known = target.batch(np.array([c.centre for c in local]))
+    known = known - np.array([c.log_norm for c in local])
+    part = np.exp(heights - max(heights.max(), known.max()))
+    rest = np.exp(known - max(heights.max(), known.max())).sum()
+    share = np.clip(part.sum() / (part.sum() + rest), SMALLEST_SHARE * len(peaks), MOST_LATER)
+    part = np.maximum(part / part.sum(), SMALLEST_SHARE)
+    return mixture.joined(Mixture.of(peaks, part), float(share))
 
 
 def sample_mixture(

@@ -13,9 +13,11 @@ from evidence.complaints import DeclarationError, EvidenceWarning, near_name, se
 from evidence.outcome import Outcome
 from evidence.rungs import findings, methods
 from evidence.rungs.expansion import expand_modes
-from evidence.rungs.importance import Sample, mode_mixture
+from evidence.rungs.importance import Sample, mode_mixture, with_peaks
 from evidence.rungs.probes import FarEnds, Probes, probe, probe_far_ends
+from evidence.rungs.proposal import Component
 from evidence.rungs.record import Audit, Mode, Rung, Target
+from evidence.rungs.unseen import find_unseen
 from evidence.rungs.verdict import Attempt, Verdict, best_available, trust_word
 
 __all__ = ["DEPTHS", "climb"]
@@ -173,6 +175,7 @@ class _Ascent:
         self.attempts: list[Attempt] = []
         self.probes: tuple[Probes, ...] = ()
         self.ends: FarEnds | None = None
+        self.unseen: list[Component] = []
         self.expanded = expand_modes(modes, target.dim)
         self.stopped = "the climb ended"
         self.interrupted = False
@@ -209,12 +212,15 @@ class _Ascent:
         """Probe every mode and build the proposal."""
         self.probes = tuple(probe(self.target, m) for m in self.modes)
         self.ends = probe_far_ends(self.target.inner, self.modes[0])
+        mixture = mode_mixture(self.modes, self.probes, self.target)
+        rng = np.random.default_rng([self.seed, 0])
+        self.unseen = find_unseen(self.target, self.modes, mixture, rng)
         return methods.Standing(
             target=self.target,
             modes=self.modes,
-            mixture=mode_mixture(self.modes, self.probes, self.target),
+            mixture=with_peaks(mixture, self.unseen, self.target),
             expanded=self.expanded,
-            flagged=self._flagged(),
+            flagged=self._flagged() or bool(self.unseen),
             seed=self.seed,
         )
 

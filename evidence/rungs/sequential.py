@@ -110,7 +110,7 @@ def run_sequential(
     start = _start_shares(mixture)
     parts = _as_arrays(start)
     with jax.enable_x64(True):
-        program = jax.jit(functools.partial(_run, target.log_density))
+        program = _program(target.log_density)
         runs = []
         for replicate in range(replicates):
             rng = np.random.default_rng([seed, 5, replicate])
@@ -118,6 +118,13 @@ def run_sequential(
             key = jax.random.key(int(rng.integers(2**31)))
             runs.append(jax.device_get(program(key, x, parts)))
     return _collect(runs, particles)
+
+
+@functools.lru_cache(maxsize=4)
+def _program(log_density: Callable) -> Callable:
+    import jax
+
+    return jax.jit(functools.partial(_run, log_density))
 
 
 def _start_shares(mixture: Mixture) -> Mixture:
