@@ -5,7 +5,7 @@ from __future__ import annotations
 import dataclasses
 import time
 import warnings as python_warnings
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import Any
 
 import numpy as np
@@ -167,7 +167,7 @@ def _describe(
 ) -> Approximation:
     """Everything about the modes that were found, without an audit."""
     peaks = list(findings.peaks)
-    failure = findings.failures[0] if findings.failures else None
+    failure = _worst(findings.failures)
     higher = failure is not None and _is_higher(failure, peaks)
     if higher:
         peaks.append(failure)
@@ -179,9 +179,10 @@ def _describe(
     leading = modes[0] if modes else None
     smooth = tuple(m for m in modes if m.status is Outcome.OK)
     laplace = leading.laplace if leading is not None else np.nan
-    total = sum_modes([m.laplace for m in modes])
+    total = np.nan if higher else sum_modes([m.laplace for m in modes])
     bare = problem.model.bare
-    status = failure.outcome if higher or leading is None else leading.status
+    blamed = failure if higher or leading is None else None
+    status = leading.status if blamed is None else blamed.outcome
     curvature = _curvature(problem, leading, parts[0]) if leading else None
     fit = leading.log_density - parts[0].log_prior - parts[0].log_jacobian if leading else np.nan
     return Approximation(
@@ -201,8 +202,8 @@ def _describe(
         posterior=Posterior(problem=problem, modes=smooth, seed=seed) if smooth else None,
         modes=tuple(modes),
         audit=None,
-        trust="unchecked" if np.isfinite(total) and not higher else "failed",
-        warnings=find_cautions(problem, status, leading, curvature),
+        trust="unchecked" if np.isfinite(total) else "failed",
+        warnings=find_cautions(problem, findings, blamed, leading, curvature),
         status=status,
         dimension=problem.dim,
         terms=problem.terms,
@@ -212,6 +213,12 @@ def _describe(
         seconds=time.perf_counter() - began,
         problem=problem,
     )
+
+
+def _worst(failures: Sequence[Peak]) -> Peak | None:
+    """The search that found no peak to be told of: where +inf was met, else the highest."""
+    infinite = [end for end in failures if end.outcome is Outcome.INFINITE]
+    return next(iter([*infinite, *failures]), None)
 
 
 def _is_higher(failure: Peak, peaks: list[Peak]) -> bool:

@@ -7,6 +7,7 @@ import numpy as np
 from evidence.complaints import Caution
 from evidence.curvature import Curvature, measure_curvature, whitened_axes
 from evidence.laplace import Mode
+from evidence.mode import Findings, Peak
 from evidence.outcome import Outcome
 from evidence.problem import Problem
 
@@ -17,11 +18,33 @@ ALARM = "the second-order term is"
 
 
 def find_cautions(
-    problem: Problem, status: Outcome, leading: Mode | None, curvature: Curvature | None
+    problem: Problem,
+    findings: Findings,
+    blamed: Peak | None,
+    leading: Mode | None,
+    curvature: Curvature | None,
 ) -> tuple[Caution, ...]:
+    """Everything that the reader must be told, the gravest first.
+
+    Parameters
+    ----------
+    problem : Problem
+    findings : Findings
+    blamed : Peak or None
+        The search that found no peak and for which the candidate failed.
+    leading : Mode or None
+    curvature : Curvature or None
+        At the leading mode.
+    """
     found: list[Caution] = []
-    if status is not Outcome.OK:
-        found.append(Caution(status.sentence + _where(problem, status, leading), status.remedy))
+    status = Outcome.OK
+    if blamed is not None:
+        status = blamed.outcome
+        found.append(Caution(status.sentence + _where(problem, blamed), status.remedy))
+    elif leading is not None and leading.status is not Outcome.OK:
+        status = leading.status
+        found.append(Caution(status.sentence + _direction(problem, leading), status.remedy))
+    found += _unseen(problem, findings, blamed)
     if problem.float32:
         found.append(
             Caution(
@@ -78,15 +101,45 @@ def _curvature_cautions(curvature: Curvature, leading: Mode | None) -> list[Caut
     return found
 
 
-def _where(problem: Problem, status: Outcome, leading: Mode | None) -> str:
-    """Which parameter is meant, where that can be said."""
-    if status is Outcome.NAN_DERIVATIVE and leading is not None:
-        here = problem.evaluate(leading.z)
-        bad = ~np.isfinite(here.gradient) | ~np.isfinite(here.hessian).all(axis=0)
-        names = [name for name, is_bad in zip(problem.names, bad, strict=True) if is_bad]
-        return f" (with respect to {', '.join(names[:4])})" if names else ""
-    if status in (Outcome.FLAT, Outcome.INDEFINITE) and leading is not None:
-        axes = whitened_axes(leading.hessian, problem.spread)
-        curvature = measure_curvature(leading.hessian, None, axes, problem.names)
-        return f": {curvature.directions[0].combination}"
+def _unseen(problem: Problem, findings: Findings, blamed: Peak | None) -> list[Caution]:
+    """Where the density is finite and the search is blind: mass there is not counted."""
+    kind = Outcome.NAN_DERIVATIVE
+    blind = [end for end in findings.failures if end.outcome is kind]
+    if not blind or (blamed is not None and blamed.outcome is kind):
+        return []
+    return [
+        Caution(
+            f"from {len(blind)} of {findings.starts} starts {kind.sentence}"
+            f"{_where(problem, blind[0])}",
+            kind.remedy,
+        )
+    ]
+
+
+def _where(problem: Problem, end: Peak) -> str:
+    """Which parameters are meant, where that can be said."""
+    if end.outcome is Outcome.NAN_DERIVATIVE:
+        here = problem.evaluate(end.z)
+        bad = ~np.isfinite(here.gradient) | ~np.isfinite(np.diagonal(here.hessian))
+        return _named(" (with respect to {})", problem, bad)
+    if end.outcome is Outcome.NO_PROGRESS:
+        slope = np.abs(end.gradient) * problem.spread
+        return _named(" (along {})", problem, slope > 0.1 * slope.max())
+    if end.outcome is Outcome.RUNAWAY:
+        distance = np.abs(end.z - problem.centre) / problem.spread
+        return _named(" (along {})", problem, distance > 0.1 * distance.max())
+    if end.outcome in (Outcome.FLAT, Outcome.INDEFINITE):
+        return _direction(problem, end)
     return ""
+
+
+def _named(text: str, problem: Problem, chosen: np.ndarray) -> str:
+    names = [name for name, is_meant in zip(problem.names, chosen, strict=True) if is_meant]
+    more = f" and {len(names) - 4} more" if len(names) > 4 else ""
+    return text.format(", ".join(names[:4]) + more) if names else ""
+
+
+def _direction(problem: Problem, peak: Peak | Mode) -> str:
+    axes = whitened_axes(peak.hessian, problem.spread)
+    curvature = measure_curvature(peak.hessian, None, axes, problem.names)
+    return f": {curvature.directions[0].combination}"

@@ -167,10 +167,9 @@ def _is_behind(leader: Entry, other: Entry) -> bool:
         return False
     gap = _log_weight(leader) - _log_weight(other)
     joint = float(np.hypot(leader.standard_error, other.standard_error))
-    needed = max(SETTLED_LEAD, JOINT_ERRORS * joint)
-    if other.trust == "doubtful":
-        needed = max(needed, OUT_OF_REACH + JOINT_ERRORS * joint)
-    return bool(np.isfinite(gap) and gap > needed)
+    least = OUT_OF_REACH + JOINT_ERRORS * joint if other.trust == "doubtful" else SETTLED_LEAD
+    # an error that is not known is none of zero: every comparison with nan is false
+    return bool(gap > JOINT_ERRORS * joint and gap >= least)
 
 
 def _verdict(
@@ -195,10 +194,12 @@ def _verdict(
     factor = leader.log_evidence - runner_up.log_evidence
     low, high = ranges[leader.name]
     interval = f" ({_chance(low)} to {_chance(high)})" if np.isfinite(low) else ""
+    graded = f"{grade(factor)} on the scale of Kass & Raftery (1995)"
+    if factor < 0:
+        graded = "so that it leads by the prior probabilities alone"
     body = (
         f"{leader.name} leads with probability {_chance(chances[leader.name])}{interval}; its log "
-        f"Bayes factor against {runner_up.name} is {factor:.2f} nats, {grade(factor)} on the scale "
-        f"of Kass & Raftery (1995){left_out}."
+        f"Bayes factor against {runner_up.name} is {factor:.2f} nats, {graded}{left_out}."
     )
     return body if settled else f"Not settled: {body}{_reason(leader, entries)}"
 

@@ -45,7 +45,8 @@ class Caution(NamedTuple):
     remedy: str = ""
 
     def __str__(self) -> str:
-        return f"{self.sentence}. {self.remedy}" if self.remedy else self.sentence
+        remedy = self.remedy[:1].upper() + self.remedy[1:]
+        return f"{self.sentence}. {remedy}" if remedy else self.sentence
 
 
 def sentence(expected: str, got: str | None = None, remedy: str | None = None) -> str:

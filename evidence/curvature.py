@@ -20,7 +20,7 @@ DIRECTIONS_KEPT = 50
 LINE_WIDTH = 1e-12
 
 
-@dataclasses.dataclass(frozen=True, kw_only=True)
+@dataclasses.dataclass(frozen=True, kw_only=True, eq=False)
 class Axes:
     """Principal axes of the posterior's Gaussian, after unit-diagonal scaling of the Hessian.
 
@@ -79,7 +79,7 @@ class Direction:
     share_from_data: float
 
 
-@dataclasses.dataclass(frozen=True, kw_only=True)
+@dataclasses.dataclass(frozen=True, kw_only=True, eq=False)
 class Curvature:
     """The Hessian of minus the log posterior at a mode, and what it says.
 

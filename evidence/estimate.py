@@ -17,7 +17,7 @@ from evidence.problem import Problem
 __all__ = ["Approximation"]
 
 
-@dataclasses.dataclass(frozen=True, kw_only=True)
+@dataclasses.dataclass(frozen=True, kw_only=True, eq=False)
 class Approximation:
     """Log evidence and posterior of one candidate, with how far they can be trusted.
 
@@ -165,7 +165,7 @@ class Approximation:
                 f"  Laplace {self.laplace:.4f} = peak {self.log_posterior_at_mode:.4f} + volume "
                 f"{volume:+.4f}; second-order term {self.second_order_term:+.4f}"
             )
-        if len(self.modes) > 1:
+        if len(self.modes) > 1 and np.isfinite(self.laplace_all_modes):
             lines.append(f"  {len(self.modes)} modes, summed: {self.laplace_all_modes:.4f}")
         shown = [f"{k} {np.array2string(np.asarray(v), precision=4)}" for k, v in self.mode.items()]
         if shown:

@@ -44,7 +44,7 @@ class Expansion:
 NOT_EXPANDED = Expansion(total=np.nan, cubic=np.nan, quartic=np.nan)
 
 
-@dataclasses.dataclass(frozen=True, kw_only=True)
+@dataclasses.dataclass(frozen=True, kw_only=True, eq=False)
 class Mode:
     """One mode with its Laplace approximation.
 

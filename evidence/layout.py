@@ -220,8 +220,7 @@ def lay_out(model: Model, hyper: Any, data: Any) -> Layout:
 
 def _block(name: str, shape: tuple[int, ...], support: Any, first: int) -> Block:
     z_shape = tuple(support.z_shape(shape))
-    indices = np.ndindex(*z_shape)
-    labels = tuple(support.label(name, index if z_shape else None) for index in indices)
+    labels = tuple(support.labels(name, shape))
     return Block(name=name, shape=shape, z_shape=z_shape, first=first, labels=labels)
 
 

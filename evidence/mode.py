@@ -41,7 +41,7 @@ COMPILED_FROM = 32  # starts from which compiling the whole search pays
 CARRIED_ON = 10  # times that a search which ran out of steps is taken up again
 
 
-@dataclasses.dataclass(frozen=True, kw_only=True)
+@dataclasses.dataclass(frozen=True, kw_only=True, eq=False)
 class Peak:
     """Where searches ended.
 

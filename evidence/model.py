@@ -82,6 +82,7 @@ class Model:
         self.priors = _checked_priors(self.name, priors)
         self.log_likelihood = _checked_callable(self.name, "log_likelihood", log_likelihood)
         self.constants = _checked_constants(self.name, constants, self.priors)
+        self.float32 = _float32(self.priors, constants)
         self.start = _checked_start(self.name, start, self.priors)
         self.simulate = _checked_callable(self.name, "simulate", simulate, optional=True)
         self.predict = _checked_callable(self.name, "predict", predict, optional=True)
@@ -304,6 +305,19 @@ def _checked_constants(owner: str, constants: Any, priors: Mapping[str, Any]) ->
                 )
             )
     return {k: _number(owner, f"constant {k!r}", v) for k, v in constants.items()}
+
+
+def _float32(priors: Mapping[str, Any], constants: Any) -> tuple[str, ...]:
+    """What of the declaration came in single precision: the lost digits do not come back."""
+    found = [f"constant {k!r}" for k, v in (constants or {}).items() if _is_float32(v)]
+    for name, prior in priors.items():
+        for leaf in getattr(prior, "float32_leaves", ()):
+            found.append(f"{leaf} of the prior of {name!r}")
+    return tuple(found)
+
+
+def _is_float32(value: Any) -> bool:
+    return getattr(value, "dtype", None) == np.float32
 
 
 def _checked_start(owner: str, start: Any, priors: Mapping[str, Any]) -> dict[str, Any]:

@@ -34,7 +34,7 @@ COLUMNS = {
 }
 
 
-@dataclasses.dataclass(frozen=True, kw_only=True)
+@dataclasses.dataclass(frozen=True, kw_only=True, eq=False)
 class WeightedDraws:
     """Draws of the audit's accepted mixture with their weights: better than the Gaussian.
 
@@ -58,7 +58,7 @@ class WeightedDraws:
         return self.z[rng.permutation(chosen)]
 
 
-@dataclasses.dataclass(frozen=True, kw_only=True)
+@dataclasses.dataclass(frozen=True, kw_only=True, eq=False)
 class Posterior:
     """Posterior of one candidate, as a mixture of one Gaussian per mode in z.
 

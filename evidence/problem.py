@@ -161,7 +161,7 @@ class Problem:
         layout = lay_out(self.model, hyper, arrays)
         density = Density(self.model, layout)
         terms, float32 = count_terms(self.model.name, density.terms, layout.dim, hyper, arrays)
-        return layout, terms, (*self.reading.float32, *float32)
+        return layout, terms, (*self.model.float32, *self.reading.float32, *float32)
 
     @property
     def _is_small(self) -> bool:

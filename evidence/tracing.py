@@ -41,9 +41,10 @@ def reworded(what: str) -> Iterator[None]:
     ) as error:
         raise DeclarationError(
             sentence(
-                f"{what} branches, loops or indexes in Python on a traced value",
+                f"{what} branches, loops, indexes or computes in Python on a traced value",
                 _first_line(error),
-                "Type jnp.where(condition, a, b) instead of `if`, and keep both branches finite",
+                "Type jnp.where(condition, a, b) instead of `if`, with both branches finite, and "
+                "jnp.exp(x) instead of math.exp(x)",
             )
         ) from error
     except Exception as error:

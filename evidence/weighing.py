@@ -16,6 +16,7 @@ from evidence.comparison import OUT_OF_REACH, TRUSTED, Comparison, Entry, compar
 from evidence.complaints import DeclarationError, near_name, sentence
 from evidence.estimate import Approximation
 from evidence.model import Model
+from evidence.problem import Problem
 from evidence.record import candidate_record, recorded_candidate, versions
 from evidence.report.html import notebook_fragment
 from evidence.report.json_form import FORMAT, VERSION, read_record
@@ -251,11 +252,11 @@ def weigh(
     candidates, arrays, title = _candidates(models, data)
     chances = _chances(candidates, prior_probabilities)
     first = "quick" if depth == "standard" else depth
+    _same_terms({model.name: Problem(model, arrays).terms for model in candidates})
     results: dict[str, Approximation] = {}
     for model in candidates:
         told = None if progress is None else _prefixed(progress, model.name)
         results[model.name] = fit(model, arrays, depth=first, seed=seed, progress=told)
-    _same_terms(results)
     if depth == "standard":
         _climb_where_it_matters(results, chances, depth, progress)
     for result in results.values():
@@ -306,7 +307,7 @@ def _chances(models: Sequence[Model], given: Any) -> dict[str, float]:
     if given is None:
         return dict.fromkeys(names, 1.0 / len(names))
     if not isinstance(given, Mapping):
-        values = list(given)
+        values = list(given) if np.iterable(given) and not isinstance(given, str) else [given]
         if len(values) != len(names):
             raise DeclarationError(
                 sentence(f"prior_probabilities needs {len(names)} numbers", f"{len(values)}")
@@ -319,7 +320,10 @@ def _chances(models: Sequence[Model], given: Any) -> dict[str, float]:
                 f"{name!r} is {'unknown' if name not in names else 'missing'}."
                 f"{near_name(name, names)}"
             )
-    weights = np.array([given[name] for name in names], dtype=float)
+    try:
+        weights = np.array([given[name] for name in names], dtype=float)
+    except (TypeError, ValueError):
+        weights = np.array([np.nan])
     if not np.all(np.isfinite(weights)) or np.any(weights <= 0):
         raise DeclarationError(
             sentence("prior_probabilities must be positive numbers", str(dict(given)))
@@ -327,9 +331,9 @@ def _chances(models: Sequence[Model], given: Any) -> dict[str, float]:
     return dict(zip(names, (weights / weights.sum()).tolist(), strict=True))
 
 
-def _same_terms(results: Mapping[str, Approximation]) -> None:
-    """Refuse candidates that do not weigh the same observations."""
-    counts = {name: r.terms for name, r in results.items() if r.terms is not None}
+def _same_terms(terms: Mapping[str, int | None]) -> None:
+    """Refuse candidates that do not weigh the same observations, before any is fitted."""
+    counts = {name: count for name, count in terms.items() if count is not None}
     if len(set(counts.values())) > 1:
         shown = ", ".join(f"{name!r} {count}" for name, count in counts.items())
         raise DeclarationError(
