@@ -16,6 +16,7 @@ from evidence.curvature import Curvature, measure_curvature, whitened_axes
 from evidence.estimate import Approximation
 from evidence.laplace import NOT_EXPANDED, Mode, describe_mode, expand, sum_modes
 from evidence.mode import MATTERS, Findings, Peak, find_likelihood_peak, find_modes
+from evidence.model import Model
 from evidence.outcome import Outcome
 from evidence.posterior import Posterior, WeightedDraws
 from evidence.problem import PriorPart, Problem
@@ -89,6 +90,14 @@ def fit(
 ) -> Approximation:
     """As :func:`approximate`, without issuing warnings."""
     check_options(depth, seed)
+    if not isinstance(model, Model):
+        raise DeclarationError(
+            sentence(
+                "approximate needs a candidate made with evidence.Model",
+                type(model).__name__,
+                "Type: ev.approximate(ev.Model(...), data)",
+            )
+        )
     began = time.perf_counter()
     problem = Problem(model, data)
     if problem.dim == 0:
