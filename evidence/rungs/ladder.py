@@ -22,7 +22,7 @@ from evidence.rungs.verdict import Attempt, Verdict, best_available, trust_word
 
 __all__ = ["DEPTHS", "climb"]
 
-DEPTHS = {"quick": 0, "standard": 2, "thorough": 4}  # methods after the first rung
+DEPTHS = {"quick": 0, "standard": 3, "thorough": 5}  # methods after the first rung
 SECONDS_ASKED = 60.0
 UNBOUNDED = (Outcome.RUNAWAY, Outcome.INFINITE)
 RISE_ALLOWED = 1e-6
@@ -175,6 +175,7 @@ class _Ascent:
         self.attempts: list[Attempt] = []
         self.probes: tuple[Probes, ...] = ()
         self.ends: FarEnds | None = None
+        self.counted = 0
         self.unseen: list[Component] = []
         self.expanded = expand_modes(modes, target.dim)
         self.stopped = "the climb ended"
@@ -203,8 +204,7 @@ class _Ascent:
         for method in methods.METHODS[:steps]:
             if not self._affordable(method.title, method.evaluations):
                 return
-            before = self.attempts[0]
-            if self._try(lambda run=method.run, before=before: run(standing, before)):
+            if self._try(lambda run=method.run: run(standing, self.attempts)):
                 return
         self.stopped = "no rung of this depth was accepted"
 
@@ -241,13 +241,13 @@ class _Ascent:
         return dataclasses.replace(attempt, accepted=not vetoed)
 
     def _try(self, run: Callable[[], Attempt | None]) -> bool:
-        before = self.target.evaluations
         attempt = run()
         if attempt is None:
             return False
-        spent = (
-            self.target.evaluations - before + attempt.rung.evaluations * (attempt.kind == "path")
-        )
+        spent = self.target.evaluations - self.counted
+        self.counted += spent
+        if attempt.kind == "path":  # its compiled program counts by itself
+            spent += attempt.rung.evaluations
         rung = dataclasses.replace(attempt.rung, evaluations=spent)
         self.attempts.append(dataclasses.replace(attempt, rung=rung))
         self._tell(f"{rung.name}: {rung.estimate:.3f}")

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -13,6 +13,7 @@ from evidence.rungs.importance import Sample, sample_mixture
 from evidence.rungs.proposal import Mixture
 from evidence.rungs.record import Mode, Rung, Target
 from evidence.rungs.sequential import run_sequential
+from evidence.rungs.slices import find_driver, slice_mixture
 from evidence.rungs.verdict import Attempt
 
 __all__ = ["METHODS", "Method", "Standing"]
@@ -24,6 +25,7 @@ FIRST_DRAWS, SECOND_DRAWS = 1024, 8192
 ROUND_DRAWS, FINAL_DRAWS = 3000, 8192
 MORE = 4.6
 REPLICATED = 8
+SLICED_SHARE = 0.8
 COMPONENTS = {3: 8, 4: 16}  # learned on each of the adaptive rungs
 PARTICLES, REPLICATES = 2000, 4
 
@@ -124,11 +126,11 @@ def check_large(standing: Standing) -> Attempt | None:
     return Attempt(rung=rung, accepted=rotated.agrees, kind="expansion")
 
 
-def draw_more(standing: Standing, before: Attempt) -> Attempt:
+def draw_more(standing: Standing, earlier: Sequence[Attempt]) -> Attempt:
     """Rung 2: 8192 draws of the modes' mixture."""
     sample = sample_mixture(standing.target, standing.mixture, SECOND_DRAWS, standing.rng(2))
     error = max(FLOOR_DRAWS, sample.standard_error)
-    first = before.sample
+    first = earlier[0].sample
     agreed = _agree(sample, first, 0.05) if first is not None else None
     accepted = sample.pareto_k < 0.4 and sample.standard_error < 0.015 and agreed is not False
     return _told(
@@ -138,12 +140,12 @@ def draw_more(standing: Standing, before: Attempt) -> Attempt:
     )  # fmt: skip
 
 
-def adapt(standing: Standing, _before: Attempt) -> Attempt:
+def adapt(standing: Standing, _earlier: Sequence[Attempt]) -> Attempt:
     """Rung 3: an adaptive mixture, run with and without the part on the prior's scale."""
     return _adapt_twice(standing, 3, 1.0, largest_k=0.6, largest_error=0.03)
 
 
-def adapt_longer(standing: Standing, _before: Attempt) -> Attempt:
+def adapt_longer(standing: Standing, _earlier: Sequence[Attempt]) -> Attempt:
     """Rung 4: the same with 4.6 times the draws."""
     return _adapt_twice(standing, 4, MORE, largest_k=0.7, largest_error=np.inf)
 
@@ -179,7 +181,32 @@ def _adapt_twice(
     )  # fmt: skip
 
 
-def follow_path(standing: Standing, _before: Attempt) -> Attempt:
+def draw_slices(standing: Standing, earlier: Sequence[Attempt]) -> Attempt | None:
+    """Rung 3, where all widths hang on one coordinate: conditional expansions along it."""
+    target = standing.target
+    learned = [a.sample for a in earlier if a.sample is not None][-1]
+    driver = find_driver(learned)
+    if driver is None:
+        return None
+    samples = []
+    for repetition, shift in enumerate((0.0, 0.5)):
+        row = slice_mixture(target, driver, learned, shift=shift).mixture
+        start = standing.mixture if repetition == 0 else standing.mixture.narrow()
+        mixture = start.joined(row, SLICED_SHARE)
+        rng = standing.rng(7, repetition)
+        samples.append(sample_mixture(target, mixture, 2 * FINAL_DRAWS, rng))
+    better, other = sorted(samples, key=lambda s: s.standard_error)
+    agreed = _agree(better, other, 0.05)
+    steady = max(s.pareto_k for s in samples) < 0.6 and better.standard_error < 0.03
+    return _told(
+        "conditional expansions", better.estimate, max(FLOOR_DRAWS, better.standard_error), agreed,
+        better, f"conditional expansions along {target.names[driver]}, "
+        f"{other.estimate - better.estimate:+.3f} on another grid; Pareto k "
+        f"{samples[0].pareto_k:.2f} and {samples[1].pareto_k:.2f}", accepted=agreed and steady,
+    )  # fmt: skip
+
+
+def follow_path(standing: Standing, _earlier: Sequence[Attempt]) -> Attempt:
     """Rung 5: sequential Monte Carlo, and draws of a mixture fitted to its particles."""
     path = run_sequential(
         standing.target, standing.mixture, standing.seed, replicates=REPLICATES,
@@ -260,7 +287,7 @@ class Method:
     """A rung after the first: what it runs, and how many log densities that costs."""
 
     title: str
-    run: Callable[[Standing, Attempt], Attempt]
+    run: Callable[[Standing, Sequence[Attempt]], Attempt | None]
     evaluations: int
 
 
@@ -269,6 +296,7 @@ _GRADIENT = 4  # cost of a gradient in evaluations
 METHODS = (
     Method(title="mixture draws", run=draw_more, evaluations=SECOND_DRAWS),
     Method(title="adaptive mixture", run=adapt, evaluations=2 * _ONE_ADAPTED),
+    Method(title="conditional expansions", run=draw_slices, evaluations=6 * FINAL_DRAWS),
     Method(
         title="longer adaptive mixture", run=adapt_longer, evaluations=int(2 * MORE * _ONE_ADAPTED)
     ),

@@ -19,7 +19,8 @@ __all__ = ["climb_to_peak", "find_unseen"]
 
 DRAWS, LINES, POINTS = 256, 32, 12
 DIP = 0.1  # nats
-MOST_CLIMBS, MOST_STEPS = 6, 40
+MOST_CLIMBS, MOST_STEPS = 4, 40
+MATTERS = 8.0  # nats below the leading mode, by height and volume
 DIFFERENCE = 1e-4  # of the prior sd, for the gradient
 LONGEST_STEP = 1.0  # prior sd
 SHORTENED = 0.5 ** np.arange(0, 16, 1.5)
@@ -44,12 +45,16 @@ def find_unseen(
         Source of the draws.
     """
     starts = _betrayed(target, modes, mixture, rng)
+    local = mixture.narrow().components
+    leading = max(m.log_density - c.log_norm for m, c in zip(modes, local, strict=True))
     found: list[Component] = []
     for start in starts[:MOST_CLIMBS]:
         peak = climb_to_peak(target, start)
         known = [(m.z, np.linalg.inv(m.axes)) for m in modes]
         known += [(c.centre, c.inverse) for c in found]
-        if peak is not None and not any(_same(peak, z, inverse) for z, inverse in known):
+        if peak is None or any(_same(peak, z, inverse) for z, inverse in known):
+            continue
+        if target.batch(peak.centre[None])[0] - peak.log_norm > leading - MATTERS:
             found.append(peak)
     return found
 
