@@ -126,6 +126,8 @@ def audit(
         raise DeclarationError("a saved result cannot be audited; weigh the study again.")
     if depth == "none" or problem.dim == 0:
         return approximation
+    if not approximation.modes:  # nowhere to climb from: the status says why
+        return dataclasses.replace(approximation, depth=depth, trust="failed")
     from evidence import rungs  # what depth "none" does not need is not loaded
 
     began = time.perf_counter()
@@ -138,15 +140,17 @@ def audit(
     posterior = approximation.posterior
     if isinstance(posterior, Posterior):
         posterior = dataclasses.replace(posterior, weighted=weighted)
-    known = {caution.sentence for caution in approximation.warnings}
-    found = tuple(Caution(*x) for x in climbed.warnings if x[0] not in known)
+    before = () if approximation.audit is None else approximation.audit.warnings
+    told_before = {told for told, _ in before}  # this climb says again what still holds
+    kept = without_alarm(tuple(x for x in approximation.warnings if x.sentence not in told_before))
+    found = tuple(Caution(*x) for x in climbed.warnings if x[0] not in {c.sentence for c in kept})
     return dataclasses.replace(
         approximation,
         log_evidence=climbed.log_evidence,
         standard_error=climbed.standard_error,
         trust=climbed.trust,
         audit=climbed,
-        warnings=without_alarm(approximation.warnings) + found,
+        warnings=kept + found,
         posterior=posterior,
         depth=depth,
         seconds=approximation.seconds + time.perf_counter() - began,
