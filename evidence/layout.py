@@ -213,7 +213,7 @@ def lay_out(model: Model, hyper: Any, data: Any) -> Layout:
             blocks.append(block)
             values[name] = support.forward(jnp.zeros(block.z_shape, jnp.float64))
 
-    with float64():
+    with float64(), reworded(f"the priors of {model.name!r}"):
         jax.eval_shape(walk, hyper, dict(data))
     return Layout(model=model, blocks=tuple(blocks))
 
@@ -249,7 +249,8 @@ def _prior(model: Model, name: str, hyper: Any, values: Named, data: Named) -> A
         return hyper["priors"][name]
     with reworded(f"the prior of {name!r} in {model.name!r}"):
         prior = call_flexibly(declared, values, data)
-    prior = as_prior(model.name, name, prior)
+    if hasattr(prior, "log_prob"):
+        prior = as_prior(model.name, name, prior)
     if not isinstance(prior, Distribution):
         raise DeclarationError(
             sentence(

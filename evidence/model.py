@@ -16,6 +16,7 @@ import numpy as np
 from evidence.complaints import DeclarationError, near_name, sentence
 from evidence.distributions import discrete, real
 from evidence.distributions.base import Distribution
+from evidence.distributions.fields import float32_names
 from evidence.distributions.foreign import adapt
 from evidence.distributions.supports import Support
 from evidence.fingerprint import Reading, read_functions
@@ -202,7 +203,8 @@ def as_prior(owner: str, name: str, prior: Any) -> Any:
         The value is no prior, or a discrete distribution.
     """
     # numpyro objects are callable, so their log_prob is asked for first
-    if not isinstance(prior, Distribution) and hasattr(prior, "log_prob"):
+    is_class = isinstance(prior, type)
+    if not isinstance(prior, Distribution) and hasattr(prior, "log_prob") and not is_class:
         prior = adapt(prior)
     if isinstance(prior, Distribution):
         if prior.support is discrete:
@@ -214,7 +216,7 @@ def as_prior(owner: str, name: str, prior: Any) -> Any:
                 )
             )
         return prior
-    if callable(prior) and not isinstance(prior, type):
+    if callable(prior) and not is_class:
         return prior
     raise DeclarationError(
         sentence(
@@ -309,15 +311,10 @@ def _checked_constants(owner: str, constants: Any, priors: Mapping[str, Any]) ->
 
 def _float32(priors: Mapping[str, Any], constants: Any) -> tuple[str, ...]:
     """What of the declaration came in single precision: the lost digits do not come back."""
-    found = [f"constant {k!r}" for k, v in (constants or {}).items() if _is_float32(v)]
+    found = [f"constant {name!r}" for name in float32_names((constants or {}).items())]
     for name, prior in priors.items():
-        for leaf in getattr(prior, "float32_leaves", ()):
-            found.append(f"{leaf} of the prior of {name!r}")
+        found += [f"{x} of the prior of {name!r}" for x in getattr(prior, "float32_leaves", ())]
     return tuple(found)
-
-
-def _is_float32(value: Any) -> bool:
-    return getattr(value, "dtype", None) == np.float32
 
 
 def _checked_start(owner: str, start: Any, priors: Mapping[str, Any]) -> dict[str, Any]:
@@ -361,7 +358,7 @@ def _checked_spread(
     for name, value in spread.items():
         array = _number(owner, f"spread of {name!r}", value)
         shape = supports[name].z_shape(np.shape(start[name]))
-        if np.any(array <= 0) or np.broadcast_shapes(array.shape, shape) != tuple(shape):
+        if np.any(array <= 0) or not _fits(array.shape, shape):
             raise DeclarationError(
                 sentence(
                     f"the spread of {name!r} in {owner!r} must be positive and of the shape "
@@ -371,6 +368,13 @@ def _checked_spread(
             )
         checked[name] = np.broadcast_to(array, shape).copy()
     return checked
+
+
+def _fits(given: tuple[int, ...], wanted: tuple[int, ...]) -> bool:
+    try:
+        return np.broadcast_shapes(given, wanted) == tuple(wanted)
+    except ValueError:
+        return False
 
 
 def _checked_texts(owner: str, what: str, texts: Any) -> dict[str, str]:

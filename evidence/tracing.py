@@ -23,7 +23,10 @@ def reworded(what: str) -> Iterator[None]:
     """Turn what goes wrong while tracing a user's function into a DeclarationError."""
     try:
         yield
-    except (DeclarationError, DataError, EvidenceWarning):
+    except (DeclarationError, DataError, EvidenceWarning) as error:
+        # JAX adds a note about its own frames, which says nothing to the user
+        notes = [note for note in getattr(error, "__notes__", []) if "JAX" not in note]
+        error.__notes__ = notes
         raise
     except jax.errors.TracerArrayConversionError as error:
         raise DeclarationError(
