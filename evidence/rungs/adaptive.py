@@ -16,7 +16,7 @@ __all__ = ["learn_mixture", "mixture_from_draws", "refit", "sample_adapted"]
 ROUNDS = 4
 STEPS_PER_ROUND = 3
 KEPT_OF_START = 0.2
-WHOLE_SHARE, WHOLE_STRETCH = 0.1, 3.0**0.5
+WHOLE_SHARE, WHOLE_STRETCH, WHOLE_DEGREES = 0.1, 3.0**0.5, 2.0
 COMPONENTS, FEW_COMPONENTS = 8, 2
 MANY_UP_TO_DIM = 15
 SMALLEST_SHARE = 1e-3
@@ -90,7 +90,7 @@ def _around_all(draws: np.ndarray, weights: np.ndarray, start: Mixture) -> Mixtu
     mean = weights @ draws
     spread = _covariance(draws, weights, mean)
     axes = _root(spread, spread + 1e-9 * _start_covariance(start))
-    return Mixture.of([component(mean, WHOLE_STRETCH * axes)], np.ones(1))
+    return Mixture.of([component(mean, WHOLE_STRETCH * axes, degrees=WHOLE_DEGREES)], np.ones(1))
 
 
 def _start_covariance(start: Mixture) -> np.ndarray:

@@ -64,7 +64,7 @@ def check_expansion(standing: Standing) -> Attempt:
     if residual <= EXACT:
         return _exact(standing, sample, residual)
     gap = sample.estimate - expanded.estimate
-    close = abs(gap) <= max(0.03, min(3.0 * sample.standard_error, 0.1))
+    close = abs(gap) <= max(0.03, min(2.0 * sample.standard_error, 0.05))
     believed = expanded.small and not expanded.cancels and not standing.flagged
     steady = sample.pareto_k < 0.5 and sample.standard_error < 0.04
     if believed and steady and close:

@@ -42,6 +42,9 @@ JOE_KUO = (
     (137, (1, 3, 7, 13, 13, 15, 69)),
 )
 NET_COORDINATES = 1 + len(JOE_KUO)
+_DIAGONAL = np.eye(BITS, dtype=np.uint8)
+_BELOW_DIAGONAL = np.tri(BITS, k=-1, dtype=bool)
+_PLACE_VALUES = 2 ** np.arange(BITS - 1, -1, -1, dtype=np.int64)
 
 
 def uniform_points(
@@ -66,30 +69,30 @@ def uniform_points(
         [replicates, n, dim], strictly inside the unit cube.
     """
     net = min(dim, NET_COORDINATES)
-    points = np.empty((replicates, n, dim))
-    for points_of_one in points:
-        points_of_one[:, :net] = _scrambled_net(n, net, rng)
-        points_of_one[:, net:] = _latin_hypercube(n, dim - net, rng)
-    return points
+    points = _scrambled_nets(n, net, replicates, rng)
+    if dim == net:
+        return points
+    padding = [_latin_hypercube(n, dim - net, rng) for _ in range(replicates)]
+    return np.concatenate([points, np.stack(padding)], axis=2)
 
 
-def _scrambled_net(n: int, dim: int, rng: np.random.Generator) -> np.ndarray:
-    """Return n points [n, dim] of a scrambled and shifted Sobol' sequence."""
+def _scrambled_nets(n: int, dim: int, replicates: int, rng: np.random.Generator) -> np.ndarray:
+    """Return points [replicates, n, dim] of scrambled and shifted Sobol' sequences."""
     levels = max(int(n - 1).bit_length(), 1)
-    columns = _scramble(_direction_bits()[:dim, :, :levels], rng)
-    numbers = rng.integers(0, 2**BITS, size=dim)[None, :]  # the digital shift is the first point
+    columns = _scramble(_direction_bits()[:dim, :, :levels], replicates, rng)
+    shift = rng.integers(0, 2**BITS, size=(replicates, 1, dim))
+    numbers = shift  # the first point of a digital net is zero
     for level in range(levels):
-        numbers = np.concatenate([numbers, numbers ^ columns[:, level]])
-    return (numbers[:n] + 0.5) * 2.0**-BITS
+        numbers = np.concatenate([numbers, numbers ^ columns[:, None, :, level]], axis=1)
+    return (numbers[:, :n] + 0.5) * 2.0**-BITS
 
 
-def _scramble(bits: np.ndarray, rng: np.random.Generator) -> np.ndarray:
+def _scramble(bits: np.ndarray, replicates: int, rng: np.random.Generator) -> np.ndarray:
     """Multiply generator matrices by random lower-triangular ones; columns as integers."""
-    dim = len(bits)
-    lower = np.tril(rng.integers(0, 2, size=(dim, BITS, BITS), dtype=np.uint8), -1)
-    lower += np.eye(BITS, dtype=np.uint8)
-    mixed = (lower.astype(np.float32) @ bits).astype(np.int64) & 1
-    return np.einsum("dbl,b->dl", mixed, 2 ** np.arange(BITS - 1, -1, -1, dtype=np.int64))
+    lower = rng.integers(0, 2, size=(replicates, len(bits), BITS, BITS), dtype=np.uint8)
+    lower = np.where(_BELOW_DIAGONAL, lower, _DIAGONAL).astype(np.float32)
+    mixed = (lower @ bits).astype(np.int64) & 1
+    return np.einsum("rdbl,b->rdl", mixed, _PLACE_VALUES)
 
 
 @functools.cache
