@@ -8,6 +8,7 @@ import warnings
 from pathlib import Path
 
 import numpy as np
+import pytest
 
 import evidence as ev
 
@@ -43,7 +44,7 @@ def published(key: str) -> dict:
     return stored("published.json")[key]
 
 
-def fit(model, data=None, depth: str = "none"):
+def fit(model, data, depth: str = "none"):
     """Approximate without the warnings: these are asserted where they are the subject."""
     with warnings.catch_warnings():
         warnings.simplefilter("ignore", ev.EvidenceWarning)
@@ -56,15 +57,17 @@ def assert_series(approximation, known: dict, laplace: float = 1e-9, term: float
     The term comes from differences of Hessians with a step of 0.01 sd: right to about 1e-4 of
     the size of its cubic and quartic parts.
     """
-    assert approximation.laplace == pytest_approx(known["laplace"], laplace)
+    assert approximation.laplace == pytest.approx(known["laplace"], rel=laplace, abs=laplace)
     size = abs(approximation.cubic_part) + abs(approximation.quartic_part)
     assert abs(approximation.second_order_term - known["second_order_term"]) <= term * (1e-3 + size)
 
 
-def pytest_approx(value: float, tolerance: float):
-    import pytest
-
-    return pytest.approx(value, rel=tolerance, abs=tolerance)
+def assert_covered(approximation, truth: float) -> None:
+    """The audited estimate within three stated errors of the truth, and the error not idle."""
+    error = approximation.log_evidence - truth
+    assert abs(error) <= 3.0 * approximation.standard_error + 1e-7, approximation
+    assert approximation.standard_error < 0.05, approximation
+    assert approximation.trust in ("sound", "corrected", "rough"), approximation
 
 
 def best_with_term(approximation) -> float:
