@@ -232,6 +232,9 @@ class _Ascent:
         return trouble or rise or bool(self.ends.rising.any() or self.ends.flat.any())
 
     def _check_large(self, standing: methods.Standing) -> Attempt | None:
+        d = self.target.dim
+        if d < methods.LARGE_DIM or not self._affordable("second whitening", 2 * d * 2 * d):
+            return None
         attempt = methods.check_large(standing)
         if attempt is None or not attempt.accepted:
             return attempt

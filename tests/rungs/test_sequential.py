@@ -4,7 +4,7 @@ import jax
 import jax.numpy as jnp
 import numpy as np
 import pytest
-from rung_problems import Target, log_gamma, mode_at, two_peaks
+from rung_problems import Target, mode_at, two_peaks
 
 from evidence.rungs.importance import mode_mixture
 from evidence.rungs.probes import probe
@@ -20,27 +20,20 @@ def _run(target, z, seed=0, particles=500):
     return run_sequential(target, _start(target, z), seed, replicates=4, particles=particles)
 
 
-SKEW = log_gamma(2, 0.7)
+PEAKS = two_peaks(6.0, 1.0, 0.8, spread=3.0)
 
 
-def test_exact_case_within_the_error():
-    target = SKEW
-    found = _run(target, np.zeros(2))
+def test_mass_out_of_sight_of_the_mode_within_the_error():
+    found = _run(PEAKS, np.zeros(2))
     assert found.reached
     assert abs(found.estimate) <= 3.0 * found.standard_error
-    assert found.standard_error < 0.1
-    assert found.draws.shape == (2000, target.dim)
-
-
-def test_finds_mass_out_of_sight_of_the_mode():
-    target = two_peaks(6.0, 1.0, 0.8, spread=3.0)
-    found = _run(target, np.zeros(2), particles=1000)
-    assert abs(found.estimate) < max(3.0 * found.standard_error, 0.3)
+    assert found.standard_error < 0.15
+    assert found.draws.shape == (2000, 2)
     assert np.mean(found.draws[:, 0] > 3.0) == pytest.approx(0.8, abs=0.15)
 
 
 def test_same_seed_same_digits_and_another_seed_others():
-    one, two, other = (_run(SKEW, np.zeros(2), seed=s) for s in (1, 1, 2))
+    one, two, other = (_run(PEAKS, np.zeros(2), seed=s) for s in (1, 1, 2))
     assert one.estimate == two.estimate
     assert one.estimate != other.estimate
 
