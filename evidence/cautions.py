@@ -6,7 +6,7 @@ import numpy as np
 
 from evidence.complaints import Caution
 from evidence.curvature import Curvature, measure_curvature, whitened_axes
-from evidence.laplace import Mode
+from evidence.laplace import UNKNOWN_ABOVE, Mode
 from evidence.mode import Findings, Peak
 from evidence.outcome import Outcome
 from evidence.problem import Problem
@@ -55,13 +55,11 @@ def find_cautions(
     if curvature is not None and status is Outcome.OK:
         found += _curvature_cautions(curvature, leading)
     if leading is not None and abs(leading.second_order_term) > NOTICEABLE:
-        found.append(
-            Caution(
-                f"{ALARM} {leading.second_order_term:+.2f} nats: plain Laplace is off by about "
-                "as much",
-                'Audit it with depth="standard"',
-            )
-        )
+        term = leading.second_order_term
+        says = f"{term:+.2f} nats: plain Laplace is off by about as much"
+        if abs(term) > UNKNOWN_ABOVE:
+            says = f"{term:+.2g} nats: plain Laplace is off by an unknown amount"
+        found.append(Caution(f"{ALARM} {says}", 'Audit it with depth="standard"'))
     return tuple(found)
 
 
@@ -90,11 +88,12 @@ def _curvature_cautions(curvature: Curvature, leading: Mode | None) -> list[Caut
                 "The evidence depends directly on this prior: justify it, or drop the parameter",
             )
         )
-    if leading is not None and np.any(leading.capped):
+    flat = [] if leading is None else np.flatnonzero(leading.capped[: len(curvature.directions)])
+    if len(flat):
         found.append(
             Caution(
                 "along some direction the posterior is flatter than three prior sd: "
-                f"{curvature.directions[0].combination}",
+                + "; ".join(curvature.directions[i].combination for i in flat[:3]),
                 "The Gaussian picture fails there; rely on the audit's estimate",
             )
         )

@@ -27,8 +27,8 @@ class Axes:
     Attributes
     ----------
     columns : (d, d)
-        One-sd axes L with L L' = H^-1, as columns; longest first [unconstrained]. Axes longer
-        than three prior sd are shortened to that.
+        One-sd axes L with L L' = H^-1, as columns, in the order of the eigenvalues
+        [unconstrained]. Axes longer than three prior sd are shortened to that.
     eigenvalues : (d,)
         Of the scaled Hessian, smallest first.
     directions : (d, d)
@@ -95,7 +95,7 @@ class Curvature:
         tr(H^-1 H_likelihood), the number of well-determined parameters (MacKay 1992, Neural
         Computation 4:415); nan where the parts are unknown.
     directions : tuple of Direction
-        Principal directions, the loosest first.
+        Principal directions, the loosest first: by the eigenvalue of the scaled Hessian.
     from_prior : tuple of Direction
         Directions by the share of the data in their curvature, the smallest share first.
     """
