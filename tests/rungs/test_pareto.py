@@ -23,7 +23,7 @@ def _k_of_arviz(log_weights):
         return float(arviz.psislw(log_weights)[1])
     from arviz_stats.base import array_stats
 
-    return float(array_stats.psislw(log_weights)[1])
+    return float(array_stats.psislw(-log_weights)[1])  # from 1.0 on it takes log likelihoods
 
 
 @pytest.mark.parametrize("seed", [0, 1, 2])

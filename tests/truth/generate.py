@@ -87,7 +87,8 @@ def audit_one(case: RandomIntegral, *, depth: str, seed: int = 0) -> Count:
     with warnings.catch_warnings():  # they are counted by the word of trust
         warnings.simplefilter("ignore", ev.EvidenceWarning)
         found = ev.approximate(model, depth=depth, seed=seed)
-    rung = found.audit.rungs[-1].name if found.audit.rungs else "none"
+    climbed = found.audit.rungs if found.audit is not None else ()
+    rung = climbed[-1].name if climbed else "none"
     error = found.log_evidence - case.truth
     return Count(case.name, float(error), float(found.standard_error), found.trust, rung)
 
