@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 
-from evidence.cautions import find_cautions, without_alarm
+from evidence.cautions import after_audit, find_cautions
 from evidence.complaints import Caution, DeclarationError, EvidenceWarning, near_name, sentence
 from evidence.curvature import Curvature, measure_curvature, whitened_axes
 from evidence.estimate import Approximation
@@ -141,16 +141,13 @@ def audit(
     if isinstance(posterior, Posterior):
         posterior = dataclasses.replace(posterior, weighted=weighted)
     before = () if approximation.audit is None else approximation.audit.warnings
-    told_before = {told for told, _ in before}  # this climb says again what still holds
-    kept = without_alarm(tuple(x for x in approximation.warnings if x.sentence not in told_before))
-    found = tuple(Caution(*x) for x in climbed.warnings if x[0] not in {c.sentence for c in kept})
     return dataclasses.replace(
         approximation,
         log_evidence=climbed.log_evidence,
         standard_error=climbed.standard_error,
         trust=climbed.trust,
         audit=climbed,
-        warnings=kept + found,
+        warnings=after_audit(approximation.warnings, before, climbed.warnings),
         posterior=posterior,
         depth=depth,
         seconds=approximation.seconds + time.perf_counter() - began,

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 
 from evidence.complaints import Caution
@@ -11,10 +13,12 @@ from evidence.mode import Findings, Peak
 from evidence.outcome import Outcome
 from evidence.problem import Problem
 
-__all__ = ["find_cautions", "without_alarm"]
+__all__ = ["after_audit", "find_cautions"]
 
 NOTICEABLE = 0.25  # second-order term above which plain Laplace is said to be off [nats]
 ALARM = "the second-order term is"
+HELD = "is held by the prior alone"
+HELD_SEEN = "only the prior holds"  # the same, as the audit tells it by widths alone
 
 
 def find_cautions(
@@ -63,9 +67,31 @@ def find_cautions(
     return tuple(found)
 
 
-def without_alarm(cautions: tuple[Caution, ...]) -> tuple[Caution, ...]:
-    """An audit answers the alarm about the second-order term."""
-    return tuple(c for c in cautions if not c.sentence.startswith(ALARM))
+def after_audit(
+    told: Sequence[Caution],
+    before: Sequence[tuple[str, str]],
+    found: Sequence[tuple[str, str]],
+) -> tuple[Caution, ...]:
+    """Join what was told with what an audit found, without saying a thing twice.
+
+    Parameters
+    ----------
+    told : sequence of Caution
+        So far.
+    before, found : sequence of (sentence, remedy)
+        Of an earlier audit, which the new one replaces, and of the new one.
+    """
+    earlier = {words for words, _ in before}
+    # an audit answers the alarm about the second-order term
+    kept = [c for c in told if c.sentence not in earlier and not c.sentence.startswith(ALARM)]
+    said = {c.sentence for c in kept}
+    shares_known = any(HELD in c.sentence for c in kept)
+    new = [
+        Caution(words, remedy)
+        for words, remedy in found
+        if words not in said and not (shares_known and words.startswith(HELD_SEEN))
+    ]
+    return (*kept, *new)
 
 
 def _curvature_cautions(curvature: Curvature, leading: Mode | None) -> list[Caution]:
@@ -83,7 +109,7 @@ def _curvature_cautions(curvature: Curvature, leading: Mode | None) -> list[Caut
     for direction in curvature.held_by_prior[:3]:
         found.append(
             Caution(
-                f"{direction.combination} is held by the prior alone "
+                f"{direction.combination} {HELD} "
                 f"({100 * direction.share_from_data:.1f} % of its curvature comes from the data)",
                 "The evidence depends directly on this prior: justify it, or drop the parameter",
             )

@@ -15,7 +15,14 @@ from evidence.study import read_study
 
 SHELF = Path(__file__).parents[1] / "models"
 STUDIES = sorted(path for path in SHELF.glob("*.py") if path.name != "make_data.py")
-RESPONSES = {"litter": "grams", "frogs": "frogs", "misra": "volume"}
+RESPONSES = {
+    "litter": "grams",
+    "frogs": "frogs",
+    "misra": "volume",
+    "gauge": "metres",
+    "germination": "germinated",
+    "nests": "fledged",
+}
 ALLOWED = {"jax", "jax.numpy", "pathlib", "evidence", "evidence.distributions"}
 
 # NIST/ITL StRD, Nonlinear Least Squares Regression, Misra1a to Misra1d: certified parameters b1
@@ -59,7 +66,9 @@ def test_the_shelf_is_known():
     assert {path.stem for path in STUDIES} >= set(RESPONSES)
 
 
-@pytest.mark.parametrize("name", ["litter.csv", "frogs.csv"])
+@pytest.mark.parametrize(
+    "name", ["litter.csv", "frogs.csv", "gauge.csv", "germination.csv", "nests.csv"]
+)
 def test_invented_data_are_what_the_generator_writes(tmp_path, name):
     runpy.run_path(str(SHELF / "make_data.py"))["write"](tmp_path)
     assert (tmp_path / name).read_bytes() == (SHELF / name).read_bytes()

@@ -26,7 +26,7 @@ _HALVES = (
 )
 _WORDS = ("candidate", "trust", "parameter", "unit", "note", "check", "agrees")
 _WRAPPED = ("candidate", "parameter", "unit", "note", "check")
-_UNWRAPPED_WIDTH = {"candidate": 20, "note": 16}
+_UNWRAPPED_WIDTH = {"candidate": 10, "note": 16}
 # decimals differ from row to row, as the standard errors do: the points stand above each other
 _BY_THE_POINT = (
     "log evidence",
