@@ -211,7 +211,8 @@ class Posterior:
         import arviz
 
         chain = {k: v[None] for k, v in self.draws(number, seed=seed).items()}
-        if hasattr(arviz, "InferenceData"):
+        # by its version: from 1 on the old name's lookup warns
+        if int(arviz.__version__.split(".")[0]) < 1:
             return arviz.from_dict(posterior=chain)
         return arviz.from_dict({"posterior": chain})
 
