@@ -74,7 +74,13 @@ def show(rows: list[Row]) -> str:
     head = f"{'integral':24s} {'truth':>12s} {'estimate':>12s} {'error':>9s} {'3 se':>8s}"
     lines = [f"{head}  trust      seconds"]
     for r in rows:
-        mark = " SILENT" if r.silent else "" if r.covered or np.isnan(r.error) else " not covered"
+        mark = (
+            " SILENT"
+            if r.silent
+            else ""
+            if r.covered or np.isnan(r.standard_error)
+            else " not covered"
+        )
         numbers = f"{r.truth:12.5f} {r.estimate:12.5f} {r.error:+9.4f} {3 * r.standard_error:8.4f}"
         lines.append(f"{r.name:24s} {numbers}  {r.trust:10s} {r.seconds:6.1f}{mark}")
     told = ", ".join(f"{kind} {number}" for kind, number in counts(rows).items())
