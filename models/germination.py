@@ -9,7 +9,6 @@ tolerance hold up to some salinity and then give way?
 from pathlib import Path
 
 import jax
-import jax.numpy as jnp
 
 import evidence as ev
 from evidence.distributions import Binomial, HalfNormal, Normal, Uniform

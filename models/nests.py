@@ -84,7 +84,7 @@ def models():
             {
                 "log_odds": "log odds of success on a usual island; prior: half, give or take",
                 "spread": "sd between islands in log odds; prior: up to one or two",
-                "deviation": "an island's deviation in units of the spread; standard normal",
+                "deviation": "an island's deviation in units of the spread; prior: standard normal",
             },
         ),
     ]
