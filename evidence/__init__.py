@@ -12,6 +12,7 @@ __version__ = "0.1.0"
 
 _PLACES = {
     "Approximation": "evidence.estimate",
+    "Batch": "evidence.batches.batch",
     "DataError": "evidence.complaints",
     "DeclarationError": "evidence.complaints",
     "EvidenceWarning": "evidence.complaints",
@@ -23,6 +24,7 @@ _PLACES = {
     "read_data": "evidence.tables",
     "read_study": "evidence.study",
     "weigh": "evidence.weighing",
+    "weigh_many": "evidence.batches.driver",
 }
 
 __all__ = sorted([*_PLACES, "distributions"])

@@ -23,7 +23,7 @@ from typing import Any
 import jax
 import numpy as np
 
-__all__ = ["Program", "as_numpy", "float64", "on_device"]
+__all__ = ["Program", "as_numpy", "compile_ahead", "float64", "on_device"]
 
 CACHE_VARIABLE = "EVIDENCE_COMPILE_CACHE"
 _LOCK = threading.RLock()
@@ -84,6 +84,16 @@ class Program:
             # another compiler may not know the options
             self._hasty, self._jitted = False, jax.jit(self._function)
             return self._jitted(*arguments)
+
+
+def compile_ahead(function: Callable[..., Any], *arguments: Any) -> Any:
+    """Compile for arguments of these shapes, through the persistent cache, without running.
+
+    What is returned takes such arguments inside :func:`float64`, in any thread, and can say how
+    much memory it needs: ``memory_analysis().temp_size_in_bytes``.
+    """
+    with float64(), _LOCK, _persistent_cache():
+        return jax.jit(function).lower(*arguments).compile()
 
 
 def cache_directory() -> Path | None:

@@ -52,10 +52,20 @@ class Reading:
     held: tuple[Any, ...] = dataclasses.field(default=(), repr=False, compare=False)
 
 
-def read_functions(functions: Iterable[Callable[..., Any] | None]) -> Reading:
-    """Fingerprint some functions with their closures, defaults and globals."""
+def read_functions(
+    functions: Iterable[Callable[..., Any] | None], *, lasting: bool = False
+) -> Reading:
+    """Fingerprint some functions with their closures, defaults and globals.
+
+    Parameters
+    ----------
+    functions : iterable of callable
+    lasting : bool
+        Make a fingerprint that another process finds again, for what is kept in a file: what
+        would go in by its identity goes in by its name, and changes inside it are not noticed.
+    """
     functions = list(functions)
-    reader = _Reader(functions)
+    reader = _Reader(functions, lasting=lasting)
     for function in functions:
         reader.read(function, "", 0)
     return Reading(
@@ -66,7 +76,8 @@ def read_functions(functions: Iterable[Callable[..., Any] | None]) -> Reading:
 
 
 class _Reader:
-    def __init__(self, functions: Iterable[Any]) -> None:
+    def __init__(self, functions: Iterable[Any], *, lasting: bool = False) -> None:
+        self.lasting = lasting
         self.hash = hashlib.sha256()
         self.float32: list[str] = []
         # number and object by address; held, so that no address is used twice
@@ -99,7 +110,13 @@ class _Reader:
     def identify(self, value: Any) -> None:
         """Add an object by its identity, and keep it from being freed."""
         self.held.append(value)
-        self.add(id(value))
+        if not self.lasting:
+            self.add(id(value))
+            return
+        named = value if hasattr(value, "__qualname__") else type(value)
+        module = getattr(named, "__module__", "")
+        # the module of a study is numbered anew each time it is read
+        self.add("" if self.is_users(module) else module, getattr(named, "__qualname__", ""))
 
     def is_users(self, module: str | None) -> bool:
         return _root(module) in self.homes or _is_users(module)

@@ -12,11 +12,12 @@ step squares that distance.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any, NamedTuple
 
 from evidence.outcome import Outcome
 
-__all__ = ["Search", "advance", "begin", "settle"]
+__all__ = ["Directions", "Search", "advance", "begin", "principal_directions", "settle"]
 
 DECREMENT_SETTLED = 1e-11  # g' H^-1 g at which the last full step is taken
 DECREMENT_STUCK = 1e-7  # the same, below which a rejected step is put down to rounding
@@ -74,6 +75,26 @@ class Search(NamedTuple):
     outcome: Any
 
 
+class Directions(NamedTuple):
+    """Where a search may go from a point.
+
+    Attributes
+    ----------
+    newton, escape : (d,), (d,)
+        A step that goes down, the Newton step where the Hessian is positive definite; a way off
+        a saddle, zero where it is none.
+    decrement : ()
+        Squared Newton decrement [nats].
+    smallest : ()
+        Smallest eigenvalue of the scaled Hessian, or a bound on it of the same sign.
+    """
+
+    newton: Any
+    escape: Any
+    decrement: Any
+    smallest: Any
+
+
 def begin(xp: Any, start: Any) -> Search:
     """State before the first evaluation, at a start (d,)."""
     d = start.shape[0]
@@ -103,6 +124,8 @@ def advance(
     hessian: Any,
     centre: Any,
     spread: Any,
+    *,
+    find: Callable[[Any, Any, Any, Any], Directions] | None = None,
 ) -> Search:
     """Take h, its gradient and Hessian at ``search.trial``; accept or reject, and step on.
 
@@ -115,7 +138,11 @@ def advance(
         At ``search.trial``; may hold nan or inf.
     centre, spread : (d,), (d,)
         Prior centre and sd in z.
+    find : callable, optional
+        ``find(xp, gradient, hessian, spread)`` returns Directions; by eigenvectors where left
+        out. A batch finds them by a factorisation, which is cheaper.
     """
+    find = principal_directions if find is None else find
     first = search.steps == 0
     value_ok = xp.isfinite(objective)
     derivative_ok = xp.all(xp.isfinite(gradient)) & xp.all(xp.isfinite(hessian))
@@ -136,7 +163,7 @@ def advance(
     big = pick(xp.where(xp.isfinite(hessian), hessian, 0.0), search.hessian)
     was_capped = xp.max(xp.abs(search.direction) / spread, initial=0.0) >= search.cap * 0.999
     cap = xp.where(accept & was_capped & ~first, xp.minimum(2 * search.cap, CAP_MOST), search.cap)
-    newton, escape, decrement, smallest = _directions(xp, g, big, spread)
+    newton, escape, decrement, smallest = find(xp, g, big, spread)
 
     halvings = xp.where(accept, 0, search.halvings + 1)
     stuck = ~accept & (decrement < DECREMENT_STUCK)
@@ -192,8 +219,8 @@ def settle(xp: Any, decrement: Any, smallest: Any) -> Any:
     return xp.where(moving, int(Outcome.NO_PROGRESS), singular)
 
 
-def _directions(xp: Any, gradient: Any, hessian: Any, spread: Any) -> tuple[Any, Any, Any, Any]:
-    """Newton direction, a way off a saddle, squared decrement, smallest scaled eigenvalue."""
+def principal_directions(xp: Any, gradient: Any, hessian: Any, spread: Any) -> Directions:
+    """Directions by the eigenvectors of the scaled Hessian (d, d), with absolute eigenvalues."""
     diagonal = xp.abs(xp.diagonal(hessian))
     scale = 1.0 / xp.sqrt(xp.maximum(diagonal, 1e-12 / spread**2))
     values, vectors = xp.linalg.eigh(hessian * scale[:, None] * scale[None, :])
@@ -205,7 +232,7 @@ def _directions(xp: Any, gradient: Any, hessian: Any, spread: Any) -> tuple[Any,
     # at a saddle the gradient gives no side; the largest component decides
     side = xp.where(xp.sum(downhill / spread) >= 0, 1.0, -1.0)
     escape = xp.where(values[0] < -FLAT_EIGENVALUE, side, 0.0) * downhill
-    return newton, escape, decrement, values[0]
+    return Directions(newton, escape, decrement, values[0])
 
 
 def _outcome(

@@ -25,7 +25,7 @@ from evidence.report.writing import save
 from evidence.study import Study
 from evidence.tables import fingerprint, named_arrays
 
-__all__ = ["COLUMNS", "Weighing", "weigh"]
+__all__ = ["COLUMNS", "Weighing", "candidates_of", "chances_of", "weigh"]
 
 COLUMNS = {
     "candidate": "name of the candidate",
@@ -135,7 +135,10 @@ class Weighing(Mapping[str, Approximation]):
         import pandas as pd
 
         rows = sorted(self._record["candidates"], key=lambda row: -_finite(row["log_evidence"]))
-        frame = pd.DataFrame([{key: row[key] for key in COLUMNS} for row in rows])
+        # a saved result has None where there is no number
+        frame = pd.DataFrame(
+            [{key: np.nan if row[key] is None else row[key] for key in COLUMNS} for row in rows]
+        )
         frame.attrs["columns"] = dict(COLUMNS)
         return frame
 
@@ -250,7 +253,7 @@ def weigh(
     began = time.perf_counter()
     check_options(depth, seed)
     candidates, arrays, title = _candidates(models, data)
-    chances = _chances(candidates, prior_probabilities)
+    chances = chances_of(candidates, prior_probabilities)
     first = "quick" if depth == "standard" else depth
     _same_terms({model.name: Problem(model, arrays).terms for model in candidates})
     results: dict[str, Approximation] = {}
@@ -281,7 +284,20 @@ def _candidates(models: Any, data: Any) -> tuple[list[Model], Any, str]:
     title = ""
     if isinstance(models, Study):
         title = models.title
-        models, data = models.models, models.data if data is None else data
+        data = models.data if data is None else data
+    return candidates_of(models), named_arrays(data), title
+
+
+def candidates_of(models: Any) -> list[Model]:
+    """The candidates of a study, a sequence or a single one.
+
+    Raises
+    ------
+    DeclarationError
+        There are none, something else is among them, or two have one name.
+    """
+    if isinstance(models, Study):
+        models = models.models
     if isinstance(models, Model):
         models = [models]
     candidates = list(models) if isinstance(models, Sequence) else []
@@ -299,10 +315,17 @@ def _candidates(models: Any, data: Any) -> tuple[list[Model], Any, str]:
         raise DeclarationError(
             sentence("candidates must have different names", f"{twice[0]!r} twice")
         )
-    return candidates, named_arrays(data), title
+    return candidates
 
 
-def _chances(models: Sequence[Model], given: Any) -> dict[str, float]:
+def chances_of(models: Sequence[Model], given: Any) -> dict[str, float]:
+    """Prior probabilities by name, which add up to 1; equal where none are given.
+
+    Raises
+    ------
+    DeclarationError
+        Not one positive number for each candidate.
+    """
     names = [m.name for m in models]
     if given is None:
         return dict.fromkeys(names, 1.0 / len(names))
