@@ -101,15 +101,20 @@ class Density:
         """Sum of the log-likelihood terms at z: () [nats]."""
         return jnp.sum(self.terms(z, hyper, data))
 
-    def log_density(self, z: Any, hyper: Any, data: Any) -> Any:
-        """Log posterior density at z, up to the evidence: () [nats]; nan where undefined."""
-        values, log_prior, log_jacobian = unpack(self.layout, z, hyper, data)
-        return jnp.sum(self._terms(values, hyper, data)) + log_prior + log_jacobian
+    def log_density(self, z: Any, hyper: Any, data: Any, weights: Any = None) -> Any:
+        """Log posterior density at z, up to the evidence: () [nats]; nan where undefined.
 
-    def evaluate(self, z: Any, hyper: Any, data: Any) -> Evaluation:
+        ``weights`` (n,), one per log-likelihood term, multiply the terms where given.
+        """
+        values, log_prior, log_jacobian = unpack(self.layout, z, hyper, data)
+        terms = self._terms(values, hyper, data)
+        terms = terms if weights is None else weights * terms
+        return jnp.sum(terms) + log_prior + log_jacobian
+
+    def evaluate(self, z: Any, hyper: Any, data: Any, weights: Any = None) -> Evaluation:
         """Log density, gradient and curvature at z."""
         value, _, slope, curve = derivatives(
-            lambda point: (self.log_density(point, hyper, data), ()), z
+            lambda point: (self.log_density(point, hyper, data, weights), ()), z
         )
         return Evaluation(log_density=value, gradient=slope, hessian=-curve)
 
