@@ -258,7 +258,9 @@ class RecordedPosterior:
 def _frame(rows: list[dict[str, Any]]) -> Any:
     import pandas as pd
 
-    frame = pd.DataFrame(rows, columns=list(COLUMNS))
+    # a saved result has None where there is no number
+    plain = [{key: np.nan if value is None else value for key, value in r.items()} for r in rows]
+    frame = pd.DataFrame(plain, columns=list(COLUMNS))
     frame.attrs["columns"] = dict(COLUMNS)
     return frame
 
