@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import collections
-import concurrent.futures
 import contextlib
 import os
 import time
@@ -18,11 +16,12 @@ from evidence.approximation import check_options
 from evidence.batches.answers import Settings
 from evidence.batches.batch import Batch
 from evidence.batches.candidate import Candidate
-from evidence.batches.parts import Part
-from evidence.batches.results import PartResult, join
+from evidence.batches.results import PartResult
+from evidence.batches.solving import in_threads, solve_part
 from evidence.batches.sources import Raw, Source, open_source
 from evidence.batches.store import Store
 from evidence.batches.template import learn_settings
+from evidence.candidates import candidates_of, chances_of
 from evidence.complaints import DataError, DeclarationError, near_name, sentence
 from evidence.fingerprint import read_functions
 from evidence.model import Model
@@ -30,9 +29,8 @@ from evidence.record import versions
 from evidence.report.progress import ProgressLine
 from evidence.study import Study
 from evidence.tables import fingerprint, named_arrays
-from evidence.weighing import candidates_of, chances_of
 
-__all__ = ["solve_part", "weigh_many"]
+__all__ = ["weigh_many"]
 
 PART_BYTES = 32 * 2**20
 PART_MOST, PART_LEAST = 8192, 64
@@ -125,18 +123,6 @@ def weigh_many(
     return Batch(asked, where or tuple(parts), set_aside=set_aside)
 
 
-def solve_part(candidates: Sequence[Candidate], index: int, part: Part,
-               chances: Sequence[float]) -> PartResult:  # fmt: skip
-    """Every candidate on the data sets of a part."""
-    notes = {place: note for place, (_, note) in part.bad.items()}
-    answers = []
-    for candidate in candidates:
-        found, bad = candidate.solve(part)
-        answers.append(found)
-        notes.update({place: note for place, (_, note) in bad.items()})
-    return join(index, part.first, part.names, answers, notes, chances, part.fingerprint)
-
-
 class _Run:
     """One run: what is asked, and the candidates once the first data sets have been seen."""
 
@@ -218,24 +204,6 @@ class _Run:
         if self.on_bad == "raise" and result.notes:
             place, note = min(result.notes.items())
             raise DataError(sentence(f"data set {result.names[place]!r} cannot be used", note))
-
-
-def in_threads(
-    work: Callable[[Any], PartResult], tasks: Iterable[Any], threads: int
-) -> Iterator[PartResult]:
-    """Work on tasks in some threads, one queue each; results come in order."""
-    waiting: collections.deque[concurrent.futures.Future[PartResult]] = collections.deque()
-    with concurrent.futures.ThreadPoolExecutor(threads, "evidence") as pool:
-        try:
-            for task in tasks:
-                waiting.append(pool.submit(work, task))
-                if len(waiting) > threads:
-                    yield waiting.popleft().result()
-            while waiting:
-                yield waiting.popleft().result()
-        finally:
-            for future in waiting:
-                future.cancel()
 
 
 class _Pace:

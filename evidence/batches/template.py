@@ -8,7 +8,8 @@ import numpy as np
 
 from evidence.batches.answers import Settings
 from evidence.batches.parts import Part, learn_schema
-from evidence.complaints import DeclarationError, sentence
+from evidence.candidates import check_same_terms
+from evidence.complaints import DeclarationError
 from evidence.mode import MATTERS, find_modes
 from evidence.model import Model
 from evidence.problem import Problem
@@ -40,7 +41,7 @@ def learn_settings(
         No data set suits all candidates, or they return different numbers of terms.
     """
     template, problems = _first_that_suits(models, part, shared)
-    _same_terms(problems)
+    check_same_terms({p.model.name: p.terms for p in problems})
     terms = next((p.terms for p in problems if p.terms is not None), None)
     schema = learn_schema(part, template, terms)
     places = _pilots(part, template, schema.shapes)
@@ -69,21 +70,6 @@ def _first_that_suits(
         except DeclarationError as error:
             first_error = first_error or error
     raise first_error or DeclarationError("there is no data set to begin with.")
-
-
-def _same_terms(problems: Sequence[Problem]) -> None:
-    """Refuse candidates that do not weigh the same observations."""
-    counts = {p.model.name: p.terms for p in problems if p.terms is not None}
-    if len(set(counts.values())) > 1:
-        shown = ", ".join(f"{name!r} {count}" for name, count in counts.items())
-        raise DeclarationError(
-            sentence(
-                "the candidates return different numbers of log-likelihood terms, so they are not "
-                "weighing the same data",
-                shown,
-                "Let each return one term for every observation",
-            )
-        )
 
 
 def _pilots(part: Part, template: int, names: Mapping[str, object]) -> list[int]:
