@@ -116,6 +116,15 @@ _as_json = click.option(
 )
 
 
+_seed = click.option(
+    "--seed",
+    type=click.IntRange(0, 2**32 - 1),
+    default=0,
+    show_default=True,
+    help="Seed of the random draws.",
+)
+
+
 @main.command(epilog=_STATUS)
 @click.argument("study_path", metavar="STUDY")
 @click.option(
@@ -135,13 +144,7 @@ _as_json = click.option(
     multiple=True,
     help="Weigh only this candidate. May be given more than once.",
 )
-@click.option(
-    "--seed",
-    type=click.IntRange(0, 2**32 - 1),
-    default=0,
-    show_default=True,
-    help="Seed of the random draws.",
-)
+@_seed
 @_as_json
 @click.option("--quiet", is_flag=True, help="Show neither the result nor the progress.")
 @_debug
@@ -169,8 +172,54 @@ def weigh(
     return NOT_SETTLED if require_settled and not record["settled"] else OK
 
 
+@main.command("weigh-many", epilog=_STATUS)
+@click.argument("study_path", metavar="STUDY")
+@click.option(
+    "--data",
+    "data_path",
+    metavar="FOLDER",
+    required=True,
+    help="Folder or pattern of CSV or Parquet files, one per data set; or, with --by, one Parquet "
+    "table.",
+)
+@click.option("--store", metavar="OUT", required=True, help="Folder for the results, as Parquet.")
+@click.option("--by", metavar="COLUMN", help="Column that tells the data sets of a table apart.")
+@click.option("--workers", type=click.IntRange(1), metavar="N", help="Use N worker processes.")
+@click.option("--cluster", metavar="ADDRESS", help="Use the dask cluster at this address.")
+@click.option(
+    "--depth",
+    type=click.Choice(DEPTHS[:3]),
+    default="quick",
+    show_default=True,
+    help="How far each log evidence is checked; standard sends weak rows up the ladder.",
+)
+@_seed
+@click.option("--quiet", is_flag=True, help="Show neither the result nor the progress.")
+@_debug
+@reporting
+def weigh_many(study_path: str, data_path: str, store: str, quiet: bool, **options: Any) -> int:
+    """Weigh the candidates of a STUDY on each of many data sets.
+
+    Killed or interrupted, the same command goes on where it was.
+    """
+    from evidence.report.progress import ProgressLine
+
+    if options["workers"] and options["cluster"]:
+        raise click.UsageError("give --workers or --cluster, not both.")
+    with ProgressLine(wanted=not quiet) as progress, _printing_to_stderr():
+        progress("reading the study")
+        from evidence.batches.command import run
+
+        with _without_repeated_warnings(), _staying():
+            batch = run(study_path, data_path, store, progress=progress, **options)
+    if not quiet:
+        _show_batch(batch)
+    trust = batch.counts["trust"]
+    return DOUBTED if trust.get("doubtful") or trust.get("failed") else OK
+
+
 @main.command()
-@click.argument("result_path", metavar="RESULT.json")
+@click.argument("result_path", metavar="RESULT")
 @_saves
 @click.option(
     "--only",
@@ -182,7 +231,9 @@ def weigh(
 @_debug
 @reporting
 def show(result_path: str, saves: tuple[str, ...], only: tuple[str, ...], as_json: bool) -> int:
-    """Show a saved RESULT.json as `weigh` did."""
+    """Show a saved RESULT: the file of `weigh --save`, or the folder of `weigh-many`."""
+    if os.path.isdir(result_path):
+        return _show_store(result_path, saves, only, as_json=as_json)
     from evidence.report.json_form import read_record
 
     _check_saves(saves)
@@ -213,6 +264,26 @@ def new(path: str) -> int:
     create_text(path, starter.replace("THIS_FILE", Path(path).name))
     click.echo(f"Wrote {path}. Run it: evidence weigh {shlex.quote(path)}")
     return OK
+
+
+def _show_store(path: str, saves: Iterable[str], only: Iterable[str], *, as_json: bool) -> int:
+    if saves or only:
+        raise click.UsageError("--save and --only are for the result of one weighing, a file.")
+    from evidence.batches.batch import Batch
+
+    _show_batch(Batch.open(path), as_json=as_json)
+    return OK
+
+
+def _show_batch(batch: Any, *, as_json: bool = False) -> None:
+    if as_json:
+        from evidence.report.json_form import record_to_json
+
+        click.echo(record_to_json(batch.to_dict()), nl=False)
+        return
+    from evidence.report.batch_text import batch_text
+
+    click.echo(batch_text(batch.to_dict()))
 
 
 def _check_saves(saves: Iterable[str]) -> None:

@@ -152,8 +152,10 @@ class Batch:
         return f"{text}; {weak} rows are doubtful or failed" if weak else text
 
     def to_dict(self) -> dict[str, Any]:
-        """Counts and what was asked, as plain numbers and texts."""
-        return {"manifest": self.manifest, "counts": self.counts, "summary": self.summary}
+        """What a report shows, as plain numbers and texts."""
+        from evidence.batches.overview import overview
+
+        return overview(self)
 
     def __repr__(self) -> str:
         lines = [f"Batch: {self.summary}"]

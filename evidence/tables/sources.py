@@ -157,7 +157,7 @@ def _find(path: Path) -> Path:
 
 
 def _from_parquet(file: Path, categories: list[str], flaws: Flaws, source: str) -> NamedArrays:
-    load_optional("pyarrow", "parquet")
+    load_optional("pyarrow", "batch")
     import pandas
 
     try:
