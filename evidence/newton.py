@@ -143,69 +143,85 @@ def advance(
         out. A batch finds them by a factorisation, which is cheaper.
     """
     find = principal_directions if find is None else find
-    first = search.steps == 0
+    first, finishing = search.steps == 0, search.phase == FINISHING
     value_ok = xp.isfinite(objective)
     derivative_ok = xp.all(xp.isfinite(gradient)) & xp.all(xp.isfinite(hessian))
-    infinite = objective == -xp.inf
+    accept = value_ok & derivative_ok & (first | finishing | _is_lower(xp, search, objective))
+    here = _moved(xp, search, accept, objective, gradient, hessian, spread)
+    found = find(xp, here.gradient, here.hessian, spread)
+
+    stuck = ~accept & (found.decrement < DECREMENT_STUCK)
+    still = (found.decrement < DECREMENT_SETTLED) | stuck
+    finish = still & (found.smallest > FLAT_EIGENVALUE) & ~finishing
+    flat = still & (xp.abs(found.smallest) <= FLAT_EIGENVALUE)
+    exhausted = here.halvings > HALVINGS
+    direction = _capped_direction(xp, found, here.cap, spread)
+
+    distance = xp.max(xp.abs(here.z - centre) / spread, initial=0.0)
+    lost = value_ok & ~derivative_ok & (first | exhausted)
+    outcome = _outcome(
+        xp,
+        infinite=objective == -xp.inf,
+        no_value=first & ~value_ok,
+        no_derivative=lost & (distance <= STRAYED),
+        # a scale on its way to zero overflows in the derivatives before it is far in prior sd
+        far=(distance > RUNAWAY) | (lost & (distance > STRAYED)),
+        limit=here.steps >= STEPS,
+    )
+    ended = (outcome > 0) | finishing | flat | exhausted
+    by_itself = settle(xp, found.decrement, found.smallest)
+    return here._replace(
+        direction=direction,
+        trial=xp.where(finish, here.z + found.newton, here.z + here.shrink * direction),
+        decrement=found.decrement,
+        smallest=found.smallest,
+        phase=xp.where(ended, ENDED, xp.where(finish, FINISHING, SEARCHING)),
+        outcome=xp.where(ended & (outcome == 0), by_itself, outcome),
+    )
+
+
+def _is_lower(xp: Any, search: Search, objective: Any) -> Any:
+    """Whether h at the trial has fallen enough; at the end, whether it fell within rounding."""
     slack = ROUNDING * (1.0 + xp.abs(objective))
     slope = -xp.sum(search.gradient * search.direction)
     wanted = search.objective - ARMIJO * search.shrink * slope
-    finishing = search.phase == FINISHING
-    lower = (objective <= wanted) | (objective <= search.objective + slack) & (slope < 1e-6)
-    accept = value_ok & derivative_ok & (first | finishing | lower)
+    return (objective <= wanted) | (objective <= search.objective + slack) & (slope < 1e-6)
+
+
+def _moved(
+    xp: Any,
+    search: Search,
+    accept: Any,
+    objective: Any,
+    gradient: Any,
+    hessian: Any,
+    spread: Any,
+) -> Search:
+    """The search at the trial where that is accepted, else at its place with half the step."""
 
     def pick(new: Any, old: Any) -> Any:
         return xp.where(accept, new, old)
 
-    z = pick(search.trial, search.z)
-    h = pick(objective, search.objective)
-    g = pick(xp.where(xp.isfinite(gradient), gradient, 0.0), search.gradient)
-    big = pick(xp.where(xp.isfinite(hessian), hessian, 0.0), search.hessian)
     was_capped = xp.max(xp.abs(search.direction) / spread, initial=0.0) >= search.cap * 0.999
-    cap = xp.where(accept & was_capped & ~first, xp.minimum(2 * search.cap, CAP_MOST), search.cap)
-    newton, escape, decrement, smallest = find(xp, g, big, spread)
-
-    halvings = xp.where(accept, 0, search.halvings + 1)
-    stuck = ~accept & (decrement < DECREMENT_STUCK)
-    settled = ((decrement < DECREMENT_SETTLED) | stuck) & (smallest > FLAT_EIGENVALUE)
-    direction = xp.where(decrement < DECREMENT_SETTLED, newton + escape, newton)
-    direction = direction / xp.maximum(1.0, xp.max(xp.abs(direction) / spread, initial=0.0) / cap)
-    shrink = xp.where(accept, 1.0, 0.5 * search.shrink)
-    flat = ((decrement < DECREMENT_SETTLED) | stuck) & (xp.abs(smallest) <= FLAT_EIGENVALUE)
-    distance = xp.max(xp.abs(z - centre) / spread, initial=0.0)
-    lost = value_ok & ~derivative_ok & (first | (halvings > HALVINGS))
-    # a scale on its way to zero overflows in the derivatives before it is far in prior sd
-    far = (distance > RUNAWAY) | (lost & (distance > STRAYED))
-
-    finish = settled & ~finishing
-    trial = xp.where(finish, z + newton, z + shrink * direction)
-    steps = search.steps + 1
-    outcome = _outcome(
-        xp,
-        infinite=infinite,
-        no_value=first & ~value_ok,
-        no_derivative=lost & (distance <= STRAYED),
-        far=far,
-        limit=steps >= STEPS,
+    widen = accept & was_capped & (search.steps > 0)
+    return search._replace(
+        z=pick(search.trial, search.z),
+        objective=pick(objective, search.objective),
+        gradient=pick(xp.where(xp.isfinite(gradient), gradient, 0.0), search.gradient),
+        hessian=pick(xp.where(xp.isfinite(hessian), hessian, 0.0), search.hessian),
+        shrink=pick(1.0, 0.5 * search.shrink),
+        cap=xp.where(widen, xp.minimum(2 * search.cap, CAP_MOST), search.cap),
+        halvings=pick(0, search.halvings + 1),
+        steps=search.steps + 1,
     )
-    ended = (outcome > 0) | finishing | flat | (halvings > HALVINGS)
-    phase = xp.where(ended, ENDED, xp.where(finish, FINISHING, SEARCHING))
-    return Search(
-        z=z,
-        objective=h,
-        gradient=g,
-        hessian=big,
-        direction=direction,
-        trial=trial,
-        shrink=shrink,
-        cap=cap,
-        decrement=decrement,
-        smallest=smallest,
-        halvings=halvings,
-        steps=steps,
-        phase=phase,
-        outcome=xp.where(ended & (outcome == 0), settle(xp, decrement, smallest), outcome),
-    )
+
+
+def _capped_direction(xp: Any, found: Directions, cap: Any, spread: Any) -> Any:
+    """Newton direction, off the saddle where the gradient vanishes, of at most ``cap`` prior sd."""
+    still = found.decrement < DECREMENT_SETTLED
+    direction = xp.where(still, found.newton + found.escape, found.newton)
+    longest = xp.max(xp.abs(direction) / spread, initial=0.0)
+    return direction / xp.maximum(1.0, longest / cap)
 
 
 def settle(xp: Any, decrement: Any, smallest: Any) -> Any:
