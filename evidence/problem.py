@@ -7,6 +7,7 @@ factor, the share of the data in the curvature and prior derivatives need the pa
 from __future__ import annotations
 
 import dataclasses
+import functools
 import time
 from collections.abc import Callable, Mapping
 from typing import Any, NamedTuple
@@ -23,8 +24,10 @@ from evidence.tracing import count_terms
 
 __all__ = ["Density", "Evaluation", "PriorPart", "Problem", "derivatives"]
 
-BATCH_ROWS = 1024
 BATCH_TERMS = 4_000_000  # rows x terms held at once
+# rows of a batch by the seconds that one value, gradient and Hessian takes: one program serves
+# all batches, and a slow density must not be evaluated at padding
+BATCH_ROWS = ((2e-3, 256), (5e-2, 32), (np.inf, 4))
 HASTY_KINDS = ("evaluate", "prior", "natural")
 SMALL = 20_000  # numbers in the data up to which hasty compilation is the better bargain
 
@@ -160,7 +163,7 @@ class Problem:
         self.centre, self.spread, self.spread_known = self.layout.prior_scale(hyper, arrays)
         self.start = self.layout.user_start(self.centre, hyper, arrays)
         self.evaluations = 0
-        self._cost = 0.0
+        self._seconds = {"evaluate": np.inf, "batch": np.inf}  # the fastest seen
 
     def _inspect(self, hyper: Any, arrays: Mapping[str, Any]) -> tuple[Layout, int | None, Any]:
         layout = lay_out(self.model, hyper, arrays)
@@ -215,7 +218,9 @@ class Problem:
     def evaluate(self, z: np.ndarray) -> Evaluation:
         """Log density and derivatives at z (d,), as NumPy arrays."""
         self.evaluations += 1
+        began = time.perf_counter()
         packed = np.asarray(self.program("evaluate", _evaluate)(z))
+        self._took("evaluate", time.perf_counter() - began)
         d = self.dim
         return Evaluation(packed[0], packed[1 : d + 1], packed[d + 1 :].reshape(d, d))
 
@@ -244,25 +249,33 @@ class Problem:
     def batch(self, z: np.ndarray) -> np.ndarray:
         """Log density at many points: (n, d) -> (n,) [nats]; nan counts as -inf, +inf stays."""
         program = self.program("batch", _batch)
-        rows = self._rows_per_call(len(z))
+        rows = self._rows_per_call
         out = np.empty(len(z))
-        began = time.perf_counter()
         for first in range(0, len(z), rows):
+            began = time.perf_counter()
             piece = z[first : first + rows]
             padded = np.concatenate([piece, np.repeat(piece[-1:], rows - len(piece), axis=0)])
             out[first : first + rows] = np.asarray(program(padded))[: len(piece)]
-        self._cost = (time.perf_counter() - began) / max(len(z), 1)
+            self._took("batch", (time.perf_counter() - began) / rows)
         self.evaluations += len(z)
         return np.where(np.isnan(out), -np.inf, out)
 
     @property
     def seconds_per_call(self) -> float:
-        """Measured cost of one density evaluation in a batch, after the first batch [s]."""
-        return self._cost
+        """Measured cost of one log density [s]; before the first batch, judged by a Hessian's."""
+        if np.isfinite(self._seconds["batch"]):
+            return self._seconds["batch"]
+        hessian = self._seconds["evaluate"]
+        return hessian / (3 + 3 * self.dim) if np.isfinite(hessian) else 0.0
 
-    def _rows_per_call(self, wanted: int) -> int:
-        most = int(np.clip(BATCH_TERMS // max(self.terms or 1, self.dim), 8, BATCH_ROWS))
-        return most if wanted > 64 else min(64, most)
+    def _took(self, what: str, seconds: float) -> None:
+        self._seconds[what] = min(self._seconds[what], seconds)  # the first one compiles
+
+    @functools.cached_property
+    def _rows_per_call(self) -> int:
+        seconds = self._seconds["evaluate"]
+        by_speed = next(rows for limit, rows in BATCH_ROWS if seconds <= limit)
+        return int(np.clip(BATCH_TERMS // max(self.terms or 1, self.dim), 4, by_speed))
 
     def log_density(self, z: Any) -> Any:
         """Traceable log density at z (d,): () [nats]; call inside the float64 context."""

@@ -17,7 +17,10 @@ from evidence.rungs.record import Mode, Target
 
 __all__ = ["climb_to_peak", "find_unseen"]
 
-DRAWS, LINES, POINTS = 256, 32, 12
+LINES, POINTS = 32, 12
+# in few dimensions a narrow peak is worth a closer look: its basin holds a fair share of draws
+DRAWS = {1: 512, 2: 2048, 3: 2048, 4: 1024, 5: 512}
+DRAWS_ABOVE = 256
 DIP = 0.1  # nats
 MOST_CLIMBS, MOST_STEPS = 4, 40
 MATTERS = 8.0  # nats below the leading mode, by height and volume
@@ -64,7 +67,7 @@ def _betrayed(
 ) -> np.ndarray:
     """Places [k, d] from which a straight walk to the nearest mode leads through a dip."""
     broad = [p for p, is_broad in zip(mixture.components, mixture.broad, strict=True) if is_broad]
-    z = broad[0].draw(uniform_points(DRAWS, target.dim + 1, rng)[0])
+    z = broad[0].draw(uniform_points(DRAWS.get(target.dim, DRAWS_ABOVE), target.dim + 1, rng)[0])
     height = target.batch(z)
     excess = np.where(np.isfinite(height), height - mixture.narrow().log_density(z), -np.inf)
     kept = np.argsort(-excess, kind="stable")[:LINES]
