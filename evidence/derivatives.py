@@ -17,6 +17,7 @@ from typing import Any, NamedTuple
 
 import jax
 import jax.numpy as jnp
+import jax.scipy.linalg as jsl
 import numpy as np
 
 from evidence import newton
@@ -107,71 +108,132 @@ def _at_one_mode(
     density: Density, start: Any, scale: Scale, arguments: Any, second_order: bool
 ) -> tuple[Any, Any, Any, Any]:
     """Laplace value (-inf where the mode is lost), second-order term, mode and Hessian."""
-    d = density.layout.dim
-    z = _mode(density)(start, scale, arguments)
-    here = density.evaluate(z, *arguments)
-    hessian, settled = _checked(here.hessian, here.gradient)
-    factor = jnp.linalg.cholesky(hessian)
-    volume = 0.5 * d * LOG_2PI - jnp.sum(jnp.log(jnp.diagonal(factor)))
-    laplace = jnp.where(settled, here.log_density + volume, -jnp.inf)
+    peak = _differentiable_peak(density)(start, scale, arguments)
+    lost = ~peak.settled
     term = jnp.zeros(())
-    if second_order and d:
-        # columns A with A' H A = 1; what is left of a lost mode must not make the sum nan
-        axes = jax.scipy.linalg.solve_triangular(factor.T, jnp.eye(d), lower=False)
-        term = jnp.where(settled, _second_order(density, z, axes, arguments), 0.0)
-    return laplace, term, z, hessian
+    if second_order and density.layout.dim:
+        # what is left of a lost mode must not make the sum nan
+        hessian = _safe(density.evaluate(peak.z, *arguments).hessian, peak.settled)
+        term = jnp.where(lost, 0.0, _second_order(density, peak.z, hessian, arguments))
+    return jnp.where(lost, -jnp.inf, peak.laplace), term, peak.z, peak.hessian
 
 
-def _mode(density: Density) -> Callable[..., Any]:
-    """The mode as a function of a start, a scale and the arguments it moves with."""
+class Found(NamedTuple):
+    """A mode as a search leaves it.
 
-    def slope(z: Any, arguments: Any) -> Any:
-        return -jax.grad(density.log_density)(z, *arguments)
+    Attributes
+    ----------
+    laplace : ()
+        Its Laplace value [nats], with all derivatives.
+    z : (d,)
+        Its place [unconstrained], with first derivatives.
+    hessian : (d, d)
+        Of minus the log density there, without derivatives; the identity where there is no peak.
+    settled : () bool
+        Whether there is a peak.
+    """
+
+    laplace: Any
+    z: Any
+    hessian: Any
+    settled: Any
+
+
+def _differentiable_peak(density: Density) -> Callable[..., Found]:
+    """The search as a function of a start, a scale and the arguments that move the mode."""
 
     @jax.custom_jvp
-    def mode(start: Any, scale: Scale, arguments: Any) -> Any:
-        def step(search: newton.Search) -> newton.Search:
-            here = density.evaluate(search.trial, *arguments)
-            return newton.advance(
-                jnp, search, -here.log_density, -here.gradient, here.hessian, *scale
-            )
+    def peak(start: Any, scale: Scale, arguments: Any) -> Found:
+        return _search(density, start, scale, arguments)
 
-        first = newton.begin(jnp, start)
-        return jax.lax.while_loop(lambda s: s.phase != newton.ENDED, step, first).z
-
-    @mode.defjvp
-    def mode_jvp(primals: Any, tangents: Any) -> Any:
+    @peak.defjvp
+    def peak_jvp(primals: Any, tangents: Any) -> tuple[Found, Found]:
         start, scale, arguments = primals
-        z = mode(start, scale, arguments)
-        moved = jax.jvp(lambda a: slope(z, a), (arguments,), (tangents[2],))[1]
-        here = density.evaluate(z, *arguments)
-        factor = jnp.linalg.cholesky(_checked(here.hessian, here.gradient)[0])
-        return z, -jax.scipy.linalg.cho_solve((factor, True), moved)
+        moves = tangents[2]
+        found = peak(start, scale, arguments)
+        hessian = _safe(density.evaluate(found.z, *arguments).hessian, found.settled)
+        factor = jnp.linalg.cholesky(hessian)
 
-    return mode
+        def slope(arguments: Any) -> Any:
+            return jax.grad(density.log_density)(found.z, *arguments)
+
+        z_moves = _solve(factor, jax.jvp(slope, (arguments,), (moves,))[1])
+        value = _adjoint(density, found.z, factor, arguments)
+        laplace_moves = jax.jvp(value, (arguments,), (moves,))[1]
+        still = jnp.zeros_like(found.hessian), np.zeros((), jax.dtypes.float0)
+        return found, Found(laplace_moves, z_moves, *still)
+
+    return peak
 
 
-def _checked(hessian: Any, gradient: Any) -> tuple[Any, Any]:
-    """The Hessian, the identity in place of one without a peak, and whether there is a peak."""
-    fixed, slope = jax.lax.stop_gradient((hessian, gradient))
-    factor = jnp.linalg.cholesky(fixed)
-    decrement = jnp.sum(jax.scipy.linalg.solve_triangular(factor, slope, lower=True) ** 2)
-    settled = jnp.all(jnp.isfinite(factor)) & (decrement < SETTLED)
-    return jnp.where(settled, hessian, jnp.eye(len(gradient))), settled
+def _search(density: Density, start: Any, scale: Scale, arguments: Any) -> Found:
+    def step(search: newton.Search) -> newton.Search:
+        here = density.evaluate(search.trial, *arguments)
+        return newton.advance(jnp, search, -here.log_density, -here.gradient, here.hessian, *scale)
+
+    first = newton.begin(jnp, start)
+    end = jax.lax.while_loop(lambda s: s.phase != newton.ENDED, step, first)
+    factor = jnp.linalg.cholesky(end.hessian)
+    decrement = jnp.sum(jsl.solve_triangular(factor, end.gradient, lower=True) ** 2)
+    settled = jnp.isfinite(end.objective) & jnp.all(jnp.isfinite(factor)) & (decrement < SETTLED)
+    half_log_det = jnp.sum(jnp.log(jnp.diagonal(factor)))
+    laplace = -end.objective + 0.5 * len(start) * LOG_2PI - half_log_det
+    return Found(laplace, end.z, _safe(end.hessian, settled), settled)
 
 
-def _second_order(density: Density, z: Any, axes: Any, arguments: Any) -> Any:
+def _adjoint(density: Density, z: Any, factor: Any, arguments: Any) -> Callable[[Any], Any]:
+    """A function of the arguments with the derivative of the Laplace value at a fixed z.
+
+    -h - 1/2 sum_k D2h[s_k, s_k] + Dh[u] with S = sum_k s_k s_k' and u = S v, where v is the
+    derivative of the middle sum in z: by the implicit function theorem the last term carries how
+    the volume changes as the mode moves.
+    """
+    d = len(z)
+    axes = jsl.solve_triangular(factor.T, jnp.eye(d), lower=False)
+
+    def along(place: Any, direction: Any, arguments: Any) -> Any:
+        """First derivative of the log density along a direction."""
+        return jax.jvp(lambda z: density.log_density(z, *arguments), (place,), (direction,))[1]
+
+    def half_trace(place: Any, arguments: Any) -> Any:
+        def second(column: Any) -> Any:
+            return jax.jvp(lambda z: along(z, column, arguments), (place,), (column,))[1]
+
+        return -0.5 * jnp.sum(jax.vmap(second, in_axes=1)(axes))
+
+    moving = _solve(factor, jax.grad(half_trace)(z, arguments))
+
+    def value(arguments: Any) -> Any:
+        height = density.log_density(z, *arguments)
+        return height - half_trace(z, arguments) - along(z, moving, arguments)
+
+    return value
+
+
+def _solve(factor: Any, right: Any) -> Any:
+    """H^-1 times a vector (d,), from the lower Cholesky factor of H."""
+    return jsl.cho_solve((factor, True), right)
+
+
+def _safe(hessian: Any, settled: Any) -> Any:
+    return jnp.where(settled, hessian, jnp.eye(len(hessian)))
+
+
+def _second_order(density: Density, z: Any, hessian: Any, arguments: Any) -> Any:
     """Second-order term by differences of the Hessian, as :func:`evidence.laplace.expand`."""
+    d = len(z)
+    factor = jnp.linalg.cholesky(hessian)
+    axes = jsl.solve_triangular(factor.T, jnp.eye(d), lower=False)
 
-    def along(column: Any) -> tuple[Any, Any, Any]:
-        above = axes.T @ density.evaluate(z + STEP * column, *arguments).hessian @ axes
-        below = axes.T @ density.evaluate(z - STEP * column, *arguments).hessian @ axes
-        first = (above - below) / (2 * STEP)
-        fourth = (jnp.trace(above) + jnp.trace(below) - 2 * len(z)) / STEP**2
-        return fourth, jnp.trace(first) ** 2, jnp.sum(first**2)
+    def whitened(step: Any) -> Any:
+        return axes.T @ density.evaluate(z + step, *arguments).hessian @ axes
 
-    fourth, squared_trace, squared_norm = jax.vmap(along)(axes.T)
-    return jnp.sum(squared_trace) / 8 + jnp.sum(squared_norm) / 12 - jnp.sum(fourth) / 8
+    steps = STEP * axes.T
+    above, below = jnp.split(jax.vmap(whitened)(jnp.concatenate([steps, -steps])), 2)
+    first = (above - below) / (2 * STEP)
+    fourth = (jnp.trace(above + below, axis1=1, axis2=2) - 2 * d) / STEP**2
+    squared_trace = jnp.trace(first, axis1=1, axis2=2) ** 2
+    return jnp.sum(squared_trace) / 8 + jnp.sum(first**2) / 12 - jnp.sum(fourth) / 8
 
 
 def _without_repeats(laplace: Any, z: Any, hessian: Any) -> Any:
