@@ -138,6 +138,12 @@ class Curvature:
         }
         return frame
 
+    def plot(self) -> Any:
+        """Directions by their curvature, with the shares of data and prior: a matplotlib figure."""
+        from evidence.report.figures.spectrum import spectrum
+
+        return spectrum([dataclasses.asdict(x) for x in self.directions])
+
     def __repr__(self) -> str:
         lines = [f"Curvature: {self.summary}"]
         if np.isfinite(self.well_determined):

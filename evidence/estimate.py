@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import dataclasses
+import functools
+from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
@@ -11,6 +13,7 @@ from evidence.complaints import Caution
 from evidence.curvature import Curvature
 from evidence.laplace import Mode
 from evidence.outcome import Outcome
+from evidence.portrait import paint
 from evidence.posterior import Posterior, RecordedPosterior
 from evidence.problem import Problem
 
@@ -64,6 +67,10 @@ class Approximation:
         As asked for.
     starts, seconds : int, float
         Number of starts of the mode search; wall time [s].
+    problem : Problem or None
+        The candidate joined with the data; None for a saved result.
+    recorded : mapping or None
+        The candidate's record, for a saved result.
     """
 
     name: str
@@ -92,6 +99,7 @@ class Approximation:
     starts: int
     seconds: float
     problem: Problem | None = dataclasses.field(default=None, repr=False, compare=False)
+    recorded: Mapping[str, Any] | None = dataclasses.field(default=None, repr=False, compare=False)
 
     @property
     def log_occam_factor(self) -> float:
@@ -139,6 +147,8 @@ class Approximation:
 
     def story(self) -> list[dict[str, Any]]:
         """The estimates in the order in which they were made, one dict each."""
+        if self.recorded is not None:
+            return [dict(step) for step in self.recorded["audit"]]
         order = 0.0 if np.isnan(self.second_order_term) else self.second_order_term
         rows = [
             _story("Laplace at the leading mode", self.laplace, ""),
@@ -156,6 +166,51 @@ class Approximation:
                 }
             )
         return rows
+
+    @functools.cached_property
+    def portrait(self) -> Mapping[str, Any]:
+        """What the pictures need beyond the tables, as plain lists: see :mod:`.portrait`.
+
+        Computed when first asked for; a saved result has what was saved with it.
+        """
+        if self.recorded is not None:
+            return self.recorded.get("pictures") or {}
+        return paint(self.problem, self.modes, self.posterior)
+
+    def plot(self, picture: str = "profiles") -> Any:
+        """A picture of this candidate as a matplotlib figure.
+
+        Parameters
+        ----------
+        picture : {"profiles", "audit", "curvature", "marginals", "predictions"}
+            The log density through each mode against its Gaussian; the audit's estimates; the
+            Hessian's directions; marginals, Gaussian against refined; data against prediction.
+
+        Raises
+        ------
+        DeclarationError
+            Another word.
+        ImportError
+            matplotlib is not installed.
+        """
+        from evidence.report.figures.gallery import draw_candidate
+
+        directions = () if self.curvature is None else self.curvature.directions
+        drawn = {
+            "candidate": self.name,
+            "log_evidence": self.log_evidence,
+            "standard_error": self.standard_error,
+            "audit": self.story(),
+            "curvature": {"directions": [dataclasses.asdict(x) for x in directions]},
+            "units": self._units(),
+            "pictures": self.portrait,
+        }
+        return draw_candidate(drawn, picture)
+
+    def _units(self) -> dict[str, str]:
+        if self.recorded is not None:
+            return dict(self.recorded.get("units") or {})
+        return {} if self.problem is None else dict(self.problem.model.units)
 
     def __repr__(self) -> str:
         volume = self.laplace - self.log_posterior_at_mode

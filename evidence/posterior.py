@@ -16,12 +16,15 @@ import numpy as np
 from evidence.arithmetic import log_sum_exp
 from evidence.complaints import DeclarationError, near_name, sentence
 from evidence.laplace import LOG_2PI, Mode
+from evidence.marginals import END_DENSITY, interval_shift, marginal
 from evidence.problem import Problem
 
 __all__ = ["COLUMNS", "Posterior", "RecordedPosterior", "WeightedDraws"]
 
 TABLE_DRAWS = 20_000
 INTERVAL = (0.025, 0.975)
+SHIFTED = 0.25  # sd by which an interval's end must be off before the reader is told
+MARGINALS = 30  # parameters of which marginals are drawn
 COLUMNS = {
     "parameter": "name, with the index of an array's entry",
     "unit": "as declared in units=",
@@ -48,6 +51,12 @@ class WeightedDraws:
 
     z: np.ndarray
     log_weights: np.ndarray
+
+    @property
+    def effective(self) -> float:
+        """How many draws of equal weight these are worth (Kish 1965)."""
+        share = np.exp(self.log_weights - log_sum_exp(self.log_weights))
+        return float(1.0 / np.sum(share**2))
 
     def resample(self, number: int, seed: int) -> np.ndarray:
         """Draws (number, d) of equal weight, by systematic resampling (Kitagawa 1996)."""
@@ -97,7 +106,7 @@ class Posterior:
         laplace = np.array([mode.laplace for mode in self.modes])
         return np.exp(laplace - log_sum_exp(laplace))
 
-    @property
+    @functools.cached_property
     def refined(self) -> Posterior | None:
         """Posterior by the audit's weighted draws, or None where no audit accepted any."""
         if self.weighted is None:
@@ -216,12 +225,58 @@ class Posterior:
             return arviz.from_dict(posterior=chain)
         return arviz.from_dict({"posterior": chain})
 
+    def shifted(self) -> dict[str, float]:
+        """Parameters whose 95 % interval the audit's draws put elsewhere.
+
+        Returns
+        -------
+        dict
+            Label -> shift of the farther end in Gaussian sd, where that is above 0.25 and three
+            times what the draws' number leaves open; empty where no audit accepted any.
+        """
+        if self.weighted is None or self.source == "refined" or self.refined is None:
+            return {}
+        chance = np.sqrt(INTERVAL[0] * INTERVAL[1] / self.weighted.effective) / END_DENSITY
+        found = {}
+        for row, other in zip(self.rows(), self.refined.rows(), strict=True):
+            ends = [(r["low"], r["high"]) for r in (row, other)]
+            shift = interval_shift(*ends, row["sd"])
+            if shift > max(SHIFTED, 3.0 * chance):
+                found[row["parameter"]] = shift
+        return found
+
     @property
     def summary(self) -> str:
-        """One sentence."""
+        """One sentence; another where the Gaussian's intervals are off (see :meth:`shifted`)."""
         pieces = [f"{r['parameter']} {r['mean']:.4g} (sd {r['sd']:.2g})" for r in self.rows()[:6]]
         kind = "refined" if self.source == "refined" else "Gaussian"
-        return f"{kind} posterior: " + ", ".join(pieces)
+        return f"{kind} posterior: " + ", ".join(pieces) + _off(self.shifted())
+
+    def marginals(self) -> list[dict[str, Any]]:
+        """Histograms of each scalar parameter, Gaussian and refined, as plain lists.
+
+        Returns
+        -------
+        list of dict
+            ``parameter``, ``unit``, and what :func:`evidence.marginals.marginal` gives [natural
+            units]; the first 30 parameters.
+        """
+        refined = None if self.refined is None else self.refined._table_draws
+        effective = np.inf if self.weighted is None else self.weighted.effective
+        found = []
+        for label, name, index in list(self.problem.layout.entries())[:MARGINALS]:
+            place = (slice(None), *index)
+            better = None if refined is None else refined[name][place]
+            histograms = marginal(self._table_draws[name][place], better, effective=effective)
+            unit = self.problem.model.units.get(name, "")
+            found.append({"parameter": label, "unit": unit, **histograms})
+        return found
+
+    def plot(self) -> Any:
+        """Marginals, Gaussian against refined, as a matplotlib figure."""
+        from evidence.report.figures.marginals import marginals
+
+        return marginals(dataclasses.replace(self, source="gaussian").marginals())
 
     def __repr__(self) -> str:
         return _text(self.rows(), self.source)
@@ -253,6 +308,16 @@ class RecordedPosterior:
 
     def __repr__(self) -> str:
         return _text(self.rows(), "recorded")
+
+
+def _off(shifted: Mapping[str, float]) -> str:
+    """Tell of the Gaussian's intervals that the refined ones contradict."""
+    if not shifted:
+        return ""
+    worst = sorted(shifted, key=lambda name: -shifted[name])
+    named = ", ".join(f"{name} ({shifted[name]:.1f} sd)" for name in worst[:4])
+    more = f" and {len(worst) - 4} more" if len(worst) > 4 else ""
+    return f". The refined intervals differ from the Gaussian ones: {named}{more}; see .refined"
 
 
 def _frame(rows: list[dict[str, Any]]) -> Any:

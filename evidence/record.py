@@ -83,6 +83,7 @@ def recorded_candidate(record: Mapping[str, Any], *, depth: str, seed: int) -> A
         seed=seed,
         starts=int(record.get("starts") or 0),
         seconds=_open(record.get("seconds")),
+        recorded=record,
     )
 
 

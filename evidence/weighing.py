@@ -22,7 +22,7 @@ from evidence.record import candidate_record, recorded_candidate, versions
 from evidence.report.html import notebook_fragment
 from evidence.report.json_form import FORMAT, VERSION, read_record
 from evidence.report.text import short_text
-from evidence.report.writing import save
+from evidence.report.writing import ILLUSTRATED, check_suffix, save
 from evidence.study import Study
 from evidence.tables import fingerprint, named_arrays
 
@@ -143,9 +143,22 @@ class Weighing(Mapping[str, Approximation]):
         frame.attrs["columns"] = dict(COLUMNS)
         return frame
 
-    def to_dict(self) -> dict[str, Any]:
-        """Everything as plain numbers and texts, as saved in JSON."""
-        return dict(self._record)
+    def to_dict(self, *, pictures: bool = False) -> dict[str, Any]:
+        """Everything as plain numbers and texts, as saved in JSON.
+
+        Parameters
+        ----------
+        pictures : bool
+            Also what the pictures and the predictive checks of each candidate need; computed
+            when first asked for.
+        """
+        if not pictures:
+            return dict(self._record)
+        candidates = [
+            {**row, "pictures": dict(result.portrait)}
+            for row, result in zip(self._record["candidates"], self.values(), strict=True)
+        ]
+        return {**self._record, "candidates": candidates}
 
     @functools.cached_property
     def _record(self) -> dict[str, Any]:
@@ -181,8 +194,31 @@ class Weighing(Mapping[str, Approximation]):
             An unknown suffix.
         DataError
             A path that cannot be written.
+        ImportError
+            The form shows pictures and matplotlib is not installed.
         """
-        save(self._record, path)
+        pictures = check_suffix(path) in ILLUSTRATED
+        save(self.to_dict(pictures=pictures), path)
+
+    def plot(self, picture: str = "overview") -> Any:
+        """A picture of the comparison as a matplotlib figure.
+
+        Parameters
+        ----------
+        picture : {"overview", "probabilities", "split"}
+            Both of the following; probabilities with 95 % intervals; each log evidence split into
+            fit and Occam factor.
+
+        Raises
+        ------
+        DeclarationError
+            Another word.
+        ImportError
+            matplotlib is not installed.
+        """
+        from evidence.report.figures.gallery import draw_weighing
+
+        return draw_weighing(self._record, picture)
 
     @classmethod
     def from_json(cls, path: str | Path) -> Weighing:
@@ -200,7 +236,8 @@ class Weighing(Mapping[str, Approximation]):
             for row in record["candidates"]
         }
         chances = {row["candidate"]: row["prior_probability"] for row in record["candidates"]}
-        known = ("title", "created", "versions", "depth", "seed", "run_seconds", "data", "caution")
+        known = ("title", "study", "created", "versions", "depth", "seed", "run_seconds", "data",
+                 "caution")  # fmt: skip
         weighing = cls(results, chances, {key: record.get(key) for key in known})
         weighing.__dict__["_record"] = record
         return weighing
@@ -253,7 +290,7 @@ def weigh(
     """
     began = time.perf_counter()
     check_options(depth, seed)
-    candidates, arrays, title = _candidates(models, data)
+    candidates, arrays, study = _candidates(models, data)
     chances = chances_of(candidates, prior_probabilities)
     first = "quick" if depth == "standard" else depth
     check_same_terms({model.name: Problem(model, arrays).terms for model in candidates})
@@ -269,7 +306,7 @@ def weigh(
         results,
         chances,
         {
-            "title": title,
+            **study,
             "created": datetime.datetime.now(datetime.UTC).isoformat(timespec="seconds"),
             "versions": versions(),
             "depth": depth,
@@ -281,12 +318,14 @@ def weigh(
     )
 
 
-def _candidates(models: Any, data: Any) -> tuple[list[Model], Any, str]:
-    title = ""
+def _candidates(models: Any, data: Any) -> tuple[list[Model], Any, dict[str, Any]]:
+    """Candidates, data, and the title with what is known of the study."""
+    study: dict[str, Any] = {"title": ""}
     if isinstance(models, Study):
-        title = models.title
+        file = {"text": models.text, "path": str(models.path), "fingerprint": models.fingerprint}
+        study = {"title": models.title, "study": file}
         data = models.data if data is None else data
-    return candidates_of(models), named_arrays(data), title
+    return candidates_of(models), named_arrays(data), study
 
 
 def _climb_where_it_matters(

@@ -20,6 +20,7 @@ from evidence.report.content import (
     candidate_page,
     weighing_page,
 )
+from evidence.report.markup import safe, table, warning_items
 
 __all__ = ["candidate_fragment", "notebook_fragment"]
 
@@ -35,7 +36,6 @@ _STYLE = """<style>
 .evidence-result .number { white-space: nowrap; }
 </style>"""
 _POSTERIOR_ROWS = 60
-_WORDS = ("candidate", "trust", "parameter", "unit", "note", "check", "agrees")
 
 
 def notebook_fragment(record: Mapping[str, Any]) -> str:
@@ -45,12 +45,12 @@ def notebook_fragment(record: Mapping[str, Any]) -> str:
     headings = [HEADINGS[column] for column in COLUMNS]
     return _fragment(
         [
-            f"<p><strong>{_safe(page.verdict)}</strong></p>",
-            *(f"<p>{_safe(caution)}</p>" for caution in page.cautions),
-            _table("Comparison of the candidates", headings, rows),
+            f"<p><strong>{safe(page.verdict)}</strong></p>",
+            *(f"<p>{safe(caution)}</p>" for caution in page.cautions),
+            table("Comparison of the candidates", headings, rows),
             *_warnings(page.remarks),
             _explained(page.explanations),
-            f"<p><small>{_safe(as_sentence(page.title))} {_safe(page.facts)}</small></p>",
+            f"<p><small>{safe(as_sentence(page.title))} {safe(page.facts)}</small></p>",
         ]
     )
 
@@ -62,13 +62,13 @@ def candidate_fragment(candidate: Mapping[str, Any]) -> str:
     more = len(page.posterior) - len(shown)
     return _fragment(
         [
-            f"<p><strong>{_safe(page.name)}: {_safe(page.headline)}</strong></p>",
-            f"<p>= {_safe(page.parts)}</p>",
+            f"<p><strong>{safe(page.name)}: {safe(page.headline)}</strong></p>",
+            f"<p>= {safe(page.parts)}</p>",
             *_warnings([("", page.remarks)] if page.remarks else []),
-            _table("Posterior", POSTERIOR_HEADINGS, shown) if shown else "",
+            table("Posterior", POSTERIOR_HEADINGS, shown) if shown else "",
             f"<p>and {more} more parameters</p>" if more else "",
-            _table("Audit", AUDIT_HEADINGS, page.audit) if page.audit else "",
-            *(f"<p><small>{_safe(line)}</small></p>" for line in page.curvature),
+            table("Audit", AUDIT_HEADINGS, page.audit) if page.audit else "",
+            *(f"<p><small>{safe(line)}</small></p>" for line in page.curvature),
         ]
     )
 
@@ -78,44 +78,14 @@ def _fragment(blocks: Iterable[str]) -> str:
     return f'<div class="evidence-result">\n{_STYLE}\n{body}\n</div>'
 
 
-def _safe(text: str) -> str:
-    # isolated, so that a name written from right to left does not turn what follows it
-    return f"<bdi>{escape(text, quote=True)}</bdi>" if text else ""
-
-
-def _table(caption: str, headings: Sequence[str], rows: Iterable[Sequence[str]]) -> str:
-    kinds = ["words" if heading in _WORDS else "number" for heading in headings]
-    head = "".join(
-        f'<th scope="col" class="{kind if kind == "words" else "heading"}">{_safe(heading)}</th>'
-        for kind, heading in zip(kinds, headings, strict=True)
-    )
-    body = "\n".join(f"<tr>{_row(kinds, row)}</tr>" for row in rows)
-    return (
-        f"<table>\n<caption>{escape(caption)}</caption>\n<thead><tr>{head}</tr></thead>\n"
-        f"<tbody>\n{body}\n</tbody>\n</table>"
-    )
-
-
-def _row(kinds: Sequence[str], row: Sequence[str]) -> str:
-    first = f'<th scope="row" class="words">{_safe(row[0])}</th>'
-    rest = zip(kinds[1:], row[1:], strict=True)
-    return first + "".join(f'<td class="{kind}">{_safe(cell)}</td>' for kind, cell in rest)
-
-
 def _warnings(remarks: Iterable[tuple[str, Sequence[Remark]]]) -> list[str]:
-    items = [
-        f"<li>{_safe(name)}{': ' if name else ''}{_safe(remark.sentence)}"
-        f"{f' <em>{_safe(remark.remedy)}</em>' if remark.remedy else ''}</li>"
-        for name, said in remarks
-        for remark in said
-    ]
-    listed = "\n".join(items)
-    return [f"<p><strong>Warnings</strong></p>\n<ul>\n{listed}\n</ul>"] if items else []
+    listed = warning_items(remarks)
+    return [f"<p><strong>Warnings</strong></p>\n<ul>\n{listed}\n</ul>"] if listed else []
 
 
 def _explained(explanations: Iterable[tuple[str, str]]) -> str:
     items = "\n".join(
-        f"<li>{escape(heading)}: {_safe(text)}</li>" for heading, text in explanations
+        f"<li>{escape(heading)}: {safe(text)}</li>" for heading, text in explanations
     )
     if not items:
         return ""

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import importlib.util
 import os
 import secrets
 import shutil
@@ -10,20 +11,63 @@ from collections.abc import Callable, Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
-from evidence.complaints import DataError, DeclarationError, near_name, sentence
+from evidence.complaints import (
+    DataError,
+    DeclarationError,
+    load_optional,
+    near_name,
+    sentence,
+)
 from evidence.report.csv_form import record_to_csv
 from evidence.report.json_form import record_to_json
 from evidence.report.markdown import record_to_markdown
 from evidence.report.wording import short_name
 
-__all__ = ["FORMS", "check_suffix", "check_writable", "create_text", "save", "write_text"]
+__all__ = ["FORMS", "ILLUSTRATED", "check_suffix", "check_writable", "create_text", "save", "write_text"]
 
-# suffix -> the function that turns a record into the text of that form
-FORMS: dict[str, Callable[[Mapping[str, Any]], str]] = {
+
+
+def _page(record: Mapping[str, Any]) -> str:
+    from evidence.report.page import record_to_page
+
+    return record_to_page(record)
+
+
+def _tex(record: Mapping[str, Any]) -> str:
+    from evidence.report.tex import record_to_tex
+
+    return record_to_tex(record)
+
+
+def _png(record: Mapping[str, Any]) -> bytes:
+    from evidence.report.figures.canvas import to_png
+    from evidence.report.figures.gallery import draw_weighing
+
+    return to_png(draw_weighing(record, "overview"))
+
+
+def _svg(record: Mapping[str, Any]) -> str:
+    from evidence.report.figures.canvas import to_svg
+    from evidence.report.figures.gallery import draw_weighing
+    from evidence.report.figures.words import CAPTIONS, described
+    from evidence.report.vector import titled_svg
+
+    drawn = to_svg(draw_weighing(record, "overview"))
+    return titled_svg(drawn, CAPTIONS["overview"], described("overview", record))
+
+
+# suffix -> the function that turns a record into the content of that form
+FORMS: dict[str, Callable[[Mapping[str, Any]], str | bytes]] = {
+    ".html": _page,
     ".json": record_to_json,
     ".csv": record_to_csv,
+    ".tex": _tex,
     ".md": record_to_markdown,
+    ".png": _png,
+    ".svg": _svg,
 }
+ILLUSTRATED = (".html", ".json")  # forms that hold the pictures' parts of the record
+_DRAWN = (".html", ".png", ".svg")  # forms that need matplotlib
 _PATH_LIMIT = 400
 
 
@@ -55,8 +99,12 @@ def check_suffix(path: str | Path) -> str:
     ------
     DeclarationError
         No form has this suffix.
+    ImportError
+        The form shows pictures and matplotlib is not installed.
     """
     suffix = Path(path).suffix.lower()
+    if suffix in _DRAWN and importlib.util.find_spec("matplotlib") is None:
+        load_optional("matplotlib", "report")  # before the calculation and not after it
     if suffix in FORMS:
         return suffix
     raise DeclarationError(
@@ -94,8 +142,8 @@ def _refuse_by_sight(target: Path) -> None:
         raise _unwritable(target, "it is write-protected")
 
 
-def write_text(path: str | Path, text: str) -> None:
-    """Write a text file in one stroke: whole, or not at all.
+def write_text(path: str | Path, text: str | bytes) -> None:
+    """Write a file of text, or of bytes, in one stroke: whole, or not at all.
 
     Raises
     ------
@@ -164,14 +212,15 @@ def _temporary(path: str | Path) -> Iterator[tuple[int, Path]]:
 
 
 @contextlib.contextmanager
-def _filled(path: str | Path, text: str) -> Iterator[tuple[Path, Path]]:
+def _filled(path: str | Path, text: str | bytes) -> Iterator[tuple[Path, Path]]:
     # a link is followed: the file it points to is the one to replace
     target = Path(os.path.realpath(path))
     with _temporary(path) as (descriptor, temporary):
-        with open(
-            descriptor, "w", encoding="utf-8", errors="backslashreplace", newline="\n"
-        ) as file:
-            file.write(text)
+        content = text
+        if isinstance(text, str):
+            content = text.encode("utf-8", errors="backslashreplace")
+        with open(descriptor, "wb") as file:
+            file.write(content)
             file.flush()
             os.fsync(file.fileno())
         if target.exists():
