@@ -50,6 +50,7 @@ def weigh_many(
     shared: Mapping[str, Any] | None = None,
     by: str | None = None,
     threads: int | None = None,
+    part_size: int | None = None,
     progress: Callable[[str], None] | None = None,
 ) -> Batch:
     """Weigh candidates on every one of many data sets.
@@ -82,6 +83,8 @@ def weigh_many(
         Column of a Parquet table that tells its data sets apart; their rows lie together.
     threads : int, optional
         One per core where not given.
+    part_size : int, optional
+        Data sets that are calculated, and kept, together; by their size where not given.
     progress : callable, optional
         Told in a few words how far it is; by default a line on the terminal says so.
 
@@ -98,23 +101,22 @@ def weigh_many(
         No data set can be used, the store belongs to another run, or ``on_bad="raise"`` and one
         is bad.
     """
-    _check(depth, seed, on_bad, threads)
+    _check(depth, seed, on_bad, threads=threads, part_size=part_size)
     candidates = candidates_of(models)
     chances = list(chances_of(candidates, prior_probabilities).values())
     common = dict(named_arrays(shared))
     source = open_source(data_sets, by)
     workers = threads or _cores()
+    size = part_size or _part_size(source, workers)
     asked = _asked(candidates, models, chances, common, depth=depth, seed=seed)
     with contextlib.ExitStack() as stack:
         if progress is None:
             progress = stack.enter_context(ProgressLine())
         kept = None
         if store is not None:
-            kept = stack.enter_context(
-                Store(store).open({**asked, "part_size": _part_size(source, workers)})
-            )
+            kept = stack.enter_context(Store(store).open({**asked, "part_size": size}))
             asked = kept.manifest
-        asked.setdefault("part_size", _part_size(source, workers))
+        asked.setdefault("part_size", size)
         run = _Run(candidates, models, asked, common, source, kept, on_bad)
         results = run.results(client, workers)
         parts = _collect(results, kept, _Pace(progress, source.total))
@@ -286,15 +288,18 @@ def _part_size(source: Source, workers: int) -> int:
     return size
 
 
-def _check(depth: Any, seed: Any, on_bad: Any, threads: Any) -> None:
+def _check(depth: Any, seed: Any, on_bad: Any, **whole: Any) -> None:
     check_options(depth, seed)
     if on_bad not in ("record", "raise"):
         raise DeclarationError(
             sentence("on_bad must be 'record' or 'raise'", repr(on_bad))
             + near_name(str(on_bad), ("record", "raise"))
         )
-    if threads is not None and (not isinstance(threads, int) or threads < 1):
-        raise DeclarationError(sentence("threads must be a whole number from 1 on", repr(threads)))
+    for name, value in whole.items():
+        if value is not None and (not isinstance(value, int) or value < 1):
+            raise DeclarationError(
+                sentence(f"{name} must be a whole number from 1 on", repr(value))
+            )
 
 
 def _cores() -> int:

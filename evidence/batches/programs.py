@@ -20,7 +20,7 @@ from evidence.model import Model
 __all__ = ["Programs", "signature"]
 
 LEAST_BYTES, WANTED_BYTES, MOST_BYTES = 2 * 2**20, 4 * 2**20, 8 * 2**20
-LEAST_SLOTS, MOST_SLOTS = 4, 512
+LEAST_SLOTS, ENOUGH_SLOTS, MOST_SLOTS = 4, 64, 512
 _LOCK = threading.RLock()
 
 
@@ -71,7 +71,9 @@ def _sized(
     slots = _power_of_two(WANTED_BYTES / max(bytes_per_slot, 1), most)
     program = compile_ahead(build(slots), *arguments)
     needed = _temporaries(program)
-    if needed is None or LEAST_BYTES <= needed <= MOST_BYTES:
+    # more slots than enough gain nothing that a second compilation could pay for
+    enough = needed is None or needed >= LEAST_BYTES or slots >= ENOUGH_SLOTS
+    if needed is None or (enough and needed <= MOST_BYTES):
         return program
     better = _power_of_two(slots * WANTED_BYTES / max(needed, 1), most)
     return program if better == slots else compile_ahead(build(better), *arguments)

@@ -15,7 +15,7 @@ import numpy as np
 
 from evidence import newton
 from evidence.batches.density import Given, RowDensity
-from evidence.batches.factor import factor, factored_directions, half_log_det
+from evidence.batches.factor import factored_directions
 from evidence.outcome import Outcome
 
 __all__ = ["Ends", "build_queue", "ends_width", "unpack_ends"]
@@ -52,7 +52,7 @@ class Ends(NamedTuple):
 
 def ends_width(dim: int) -> int:
     """Numbers in one packed row of results."""
-    return dim * dim + dim + 6
+    return dim * dim + dim + 4
 
 
 def build_queue(density: RowDensity, slots: int) -> Callable[..., Any]:
@@ -86,7 +86,7 @@ def build_queue(density: RowDensity, slots: int) -> Callable[..., Any]:
             search, place, following, own, out = carry
             search = advance(search, *own)
             done = search.phase == newton.ENDED
-            packed = jax.vmap(_pack)(search, own[1])
+            packed = jax.vmap(_pack)(search)
             out = out.at[jnp.where(done, place, length)].set(packed, mode="drop")
             place = jnp.where(done, following + jnp.cumsum(done) - 1, place)
             following = following + jnp.sum(done)
@@ -120,35 +120,43 @@ def _pick(done: Any, new: Any, old: Any) -> Any:
     return jax.tree_util.tree_map(one, new, old)
 
 
-def _pack(search: newton.Search, spread: Any) -> Any:
+def _pack(search: newton.Search) -> Any:
     """One row: fetching, and writing, each number by itself would cost more than the arithmetic."""
-    parts = factor(search.gradient, search.hessian, spread)
-    d = search.z.shape[0]
-    laplace = -search.objective + 0.5 * d * LOG_2PI - half_log_det(parts)
-    # of a matrix with unit diagonal no eigenvalue lies below det ((d - 1) / d)^(d - 1)
-    least = jnp.prod(parts.raw) * ((d - 1) / d) ** (d - 1) if d > 1 else jnp.min(parts.raw)
-    numbers = [-search.objective, laplace, search.decrement, least, search.steps, search.outcome]
+    numbers = [-search.objective, search.decrement, search.steps, search.outcome]
     return jnp.concatenate(
         [search.z, search.hessian.ravel(), jnp.stack([x.astype(search.z.dtype) for x in numbers])]
     )
 
 
 def unpack_ends(packed: np.ndarray, dim: int, spread: np.ndarray) -> Ends:
-    """Name the parts of packed rows, and look closer where a Hessian may be singular."""
+    """Name the parts of packed rows, with Laplace's value; see whether a Hessian is singular."""
     tail = packed[:, dim * dim + dim :]
     hessian = packed[:, dim : dim * dim + dim].reshape(-1, dim, dim)
-    laplace, outcome = tail[:, 1].copy(), tail[:, 5].astype(np.int64)
-    near = np.flatnonzero((outcome == Outcome.OK) & ~(tail[:, 3] > 10 * SINGULAR))
-    for row in near:
-        smallest = _smallest(hessian[row], spread[row])
-        if smallest <= SINGULAR or not np.isfinite(laplace[row]):
-            indefinite = smallest < -1e-8
-            outcome[row] = Outcome.INDEFINITE if indefinite else Outcome.FLAT
+    outcome = tail[:, 3].astype(np.int64)
+    laplace = np.full(len(packed), np.nan)
+    peaks = np.flatnonzero(outcome == Outcome.OK)
+    if len(peaks):
+        half_log_det, smallest = _measure(hessian[peaks], spread[peaks])
+        laplace[peaks] = tail[peaks, 0] + 0.5 * dim * LOG_2PI - half_log_det
+        singular = ~(smallest > SINGULAR)
+        indefinite = smallest < -1e-8
+        outcome[peaks[singular]] = Outcome.FLAT
+        outcome[peaks[singular & indefinite]] = Outcome.INDEFINITE
     laplace[outcome != Outcome.OK] = np.nan
-    return Ends(packed[:, :dim], tail[:, 0], laplace, tail[:, 2], hessian,
-                tail[:, 4].astype(np.int64), outcome)  # fmt: skip
+    steps = tail[:, 2].astype(np.int64)
+    return Ends(packed[:, :dim], tail[:, 0], laplace, tail[:, 1], hessian, steps, outcome)
 
 
-def _smallest(hessian: np.ndarray, spread: np.ndarray) -> float:
-    scale = 1.0 / np.sqrt(np.maximum(np.abs(np.diagonal(hessian)), 1e-12 / spread**2))
-    return float(np.linalg.eigvalsh(hessian * np.outer(scale, scale))[0])
+def _measure(hessian: np.ndarray, spread: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """0.5 log det (k,), and the smallest eigenvalue (k,) of the scaled Hessian or less."""
+    d = hessian.shape[1]
+    diagonal = np.abs(np.diagonal(hessian, axis1=1, axis2=2))
+    scale = 1.0 / np.sqrt(np.maximum(diagonal, 1e-12 / spread**2))
+    scaled = hessian * scale[:, :, None] * scale[:, None, :]
+    sign, log_det = np.linalg.slogdet(scaled)
+    # of a positive definite matrix of trace d no eigenvalue lies below det ((d - 1) / d)^(d - 1)
+    smallest = sign * np.exp(log_det) * ((d - 1) / d) ** (d - 1)
+    near = np.flatnonzero(~(smallest > 10 * SINGULAR))
+    if len(near):
+        smallest[near] = np.linalg.eigvalsh(scaled[near])[:, 0]
+    return 0.5 * log_det - np.log(scale).sum(axis=1), smallest

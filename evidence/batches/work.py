@@ -165,11 +165,13 @@ class Work:
         around = checks.Around(modes.z[rows], modes.hessian[rows], looks["below"], looks["above"])
         shift = checks.shifts(position, self.dim, 2 * seed + full)
         items = (around, self.centre[rows], self.spread[rows], shift, rows)
-        points = max(count // (8 * self.dim), 1)
+        points = count / (60 * self.dim)  # a density in place of a Hessian
         packed = self._in_blocks("draws", checks.build_draws, items, base, points=points)
         return verdicts.judge_draws(packed, full=full)
 
-    def _in_blocks(self, kind: str, build: Any, items: Any, *more: Any, points: int) -> np.ndarray:
+    def _in_blocks(
+        self, kind: str, build: Any, items: Any, *more: Any, points: float
+    ) -> np.ndarray:
         """Run a program on items (k, ...), as many at a time as it takes."""
         total = len(jax.tree_util.tree_leaves(items)[0])
         out = []
@@ -181,11 +183,11 @@ class Work:
             out.append(self._run(kind, build, arguments, points=points)[:count])
         return np.concatenate(out)
 
-    def _run(self, kind: str, build: Any, arguments: Any, *, points: int) -> np.ndarray:
+    def _run(self, kind: str, build: Any, arguments: Any, *, points: float) -> np.ndarray:
         """Run a program of which each slot evaluates about so many Hessians at once."""
         leaves = jax.tree_util.tree_leaves(self.given.columns)
         terms = self.bench.terms or max((x[0].size for x in leaves), default=1)
-        guess = 8 * (17 * terms + 8 * self.dim) * max(self.dim, 1) * points
+        guess = int(8 * (17 * terms + 8 * self.dim) * max(self.dim, 1) * points)
         return self.bench.programs.run(
             kind,
             lambda slots: build(self.bench.density, slots),
