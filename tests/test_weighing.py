@@ -270,7 +270,7 @@ def test_json_there_and_back(which, request, tmp_path):
     weighing = request.getfixturevalue(which)
     weighing.report(tmp_path / "one.json")
     back = Weighing.from_json(tmp_path / "one.json")
-    assert _same(weighing.to_dict(), back.to_dict())
+    assert _same(weighing.to_dict(pictures=True), back.to_dict(pictures=True))
     assert list(back) == list(weighing)
     assert (back.verdict, back.leader, back.settled) == (
         weighing.verdict,
