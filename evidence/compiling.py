@@ -63,16 +63,22 @@ class Program:
         self._function = function
         self._jitted = jax.jit(function, compiler_options=_HASTY if hasty else None)
         self._hasty = hasty
-        self._compiled = False
+        self._compiled: set[tuple[Any, ...]] = set()
 
     def __call__(self, *arguments: Any) -> Any:
-        """Run on arguments of one shape; outputs are JAX arrays of 64 bits."""
+        """Run; outputs are JAX arrays of 64 bits.
+
+        Other shapes of the first argument, or of the arrays in it, are compiled in their turn;
+        those of the others must stay the same.
+        """
+        first = arguments[0] if isinstance(arguments[0], tuple) else arguments[:1]
+        shapes = tuple(getattr(x, "shape", ()) for x in first)
         with float64():
-            if self._compiled:
+            if shapes in self._compiled:
                 return self._jitted(*arguments)
             with _LOCK, _persistent_cache():
                 result = self._first_call(*arguments)
-            self._compiled = True
+            self._compiled.add(shapes)
             return result
 
     def _first_call(self, *arguments: Any) -> Any:

@@ -35,6 +35,7 @@ MOST_STARTS = 128
 MOST_STARTS_LARGE = 16
 LARGE = 100  # dimension above which L-BFGS goes before Newton
 MATTERS = 12.0  # nats below the leader at which a mode is still counted
+STARTS_PER_MODE = 6  # with several modes: with five of six found, no single hit need tell
 SAME_MODE = 0.1  # root mean square distance, in sd of the higher mode
 LBFGS_STEPS = 500
 COMPILED_FROM = 32  # starts from which compiling the whole search pays
@@ -101,18 +102,27 @@ class Findings:
     starts: int
 
     @property
+    def that_matter(self) -> tuple[Peak, ...]:
+        """Peaks whose Laplace value is within 12 nats of the leading one's."""
+        return tuple(p for p in self.peaks if p.laplace > self.peaks[0].laplace - MATTERS)
+
+    @property
     def seen_once(self) -> int:
         """Number of peaks that matter and were reached by one start only."""
-        if not self.peaks:
-            return 0
-        least = self.peaks[0].laplace - MATTERS
-        return sum(p.hits == 1 and p.laplace > least for p in self.peaks)
+        return sum(p.hits == 1 for p in self.that_matter)
+
+    @property
+    def thin(self) -> bool:
+        """Whether so few starts found these peaks that others may have been missed."""
+        several = len(self.that_matter) > 1
+        few = several and self.starts < STARTS_PER_MODE * len(self.that_matter)
+        return bool(self.seen_once) or few
 
 
 def find_modes(
     problem: Problem, *, seed: int = 0, progress: Callable[[str], None] | None = None
 ) -> Findings:
-    """Search from several starts, doubling their number while a mode was hit by one start only.
+    """Search from several starts, doubling their number while they seem too few.
 
     Parameters
     ----------
@@ -126,7 +136,7 @@ def find_modes(
     -----
     Starts are the user's, the prior's centre, and a Kronecker sequence with square roots of primes
     (Richtmyer 1951), mapped to a Gaussian with the prior's centre and spread. A mode that a single
-    start found is a sign that others were missed.
+    start found, or several modes from few starts, are signs that others were missed.
     """
     large = problem.dim > LARGE
     seen_before = problem.count_fit()
@@ -140,7 +150,7 @@ def find_modes(
         search = _pick_driver(large=large, compiled=seen_before or number >= COMPILED_FROM)
         ends = _carried_on(problem, search, ends + search(problem, new))
         findings = gather(ends)
-        if number >= most or not findings.seen_once:
+        if number >= most or not findings.thin:
             return findings
         number *= 2
 
