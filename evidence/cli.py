@@ -108,11 +108,15 @@ _saves = click.option(
     "saves",
     metavar="PATH",
     multiple=True,
-    help="Write the result to PATH, in the form of its suffix: .json, .csv or .md. "
-    "May be given more than once.",
+    help="Write the result to PATH, in the form of its suffix: .html (a page with pictures), "
+    ".json, .csv, .tex, .md, .png or .svg. May be given more than once.",
 )
 _as_json = click.option(
-    "--json", "as_json", is_flag=True, help="Write the result as JSON, and nothing else, to stdout."
+    "--json",
+    "as_json",
+    is_flag=True,
+    help="Write the numbers as JSON, and nothing else, to stdout; --save x.json keeps what the "
+    "pictures need as well.",
 )
 
 
@@ -165,7 +169,10 @@ def weigh(
 ) -> int:
     """Weigh the candidates of a STUDY on its data."""
     _check_saves(saves)
-    record = _weigh_study(study_path, data_path, only, depth=depth, seed=seed, quiet=quiet)
+    from evidence.report.writing import show_pictures
+
+    options = {"depth": depth, "seed": seed, "quiet": quiet, "pictures": show_pictures(saves)}
+    record = _weigh_study(study_path, data_path, only, **options)
     _deliver(record, saves, as_json=as_json, quiet=quiet)
     if any(c["trust"] in ("doubtful", "failed") for c in record["candidates"]):
         return DOUBTED
@@ -310,6 +317,7 @@ def _weigh_study(
     depth: str,
     seed: int,
     quiet: bool,
+    pictures: bool,
 ) -> dict[str, Any]:
     from evidence.report.progress import ProgressLine
 
@@ -322,7 +330,9 @@ def _weigh_study(
 
         with _without_repeated_warnings(), _staying():
             weighing = weigh_models(study, depth=depth, seed=seed, progress=progress)
-        return weighing.to_dict()
+            if pictures:
+                progress("preparing the pictures")
+            return weighing.to_dict(pictures=pictures)
 
 
 def _narrowed(study: Study, only: tuple[str, ...]) -> Study:
@@ -385,9 +395,9 @@ def _deliver(
     for path in saves:
         save(record, path)
     if as_json:
-        from evidence.report.json_form import record_to_json
+        from evidence.report.json_form import numbers_only, record_to_json
 
-        click.echo(record_to_json(record), nl=False)
+        click.echo(record_to_json(numbers_only(record)), nl=False)
     elif not quiet:
         from evidence.report.text import WeighingView
         from evidence.report.text import show as show_view

@@ -54,9 +54,7 @@ def _density(draws: np.ndarray, edges: np.ndarray, times: int) -> list[float]:
     return density.tolist()
 
 
-def interval_shift(
-    gaussian: tuple[float, float], refined: tuple[float, float], sd: float
-) -> float:
+def interval_shift(gaussian: tuple[float, float], refined: tuple[float, float], sd: float) -> float:
     """How far the farther end of one interval lies from that of another, in sd of the first."""
     if not sd > 0:
         return 0.0

@@ -20,7 +20,7 @@ from evidence.model import Model
 from evidence.problem import Problem
 from evidence.record import candidate_record, recorded_candidate, versions
 from evidence.report.html import notebook_fragment
-from evidence.report.json_form import FORMAT, VERSION, read_record
+from evidence.report.json_form import FORMAT, VERSION, numbers_only, read_record
 from evidence.report.text import short_text
 from evidence.report.writing import ILLUSTRATED, check_suffix, save
 from evidence.study import Study
@@ -154,10 +154,9 @@ class Weighing(Mapping[str, Approximation]):
         """
         if not pictures:
             return dict(self._record)
-        candidates = [
-            {**row, "pictures": dict(result.portrait)}
-            for row, result in zip(self._record["candidates"], self.values(), strict=True)
-        ]
+        rows = zip(self._record["candidates"], (r.portrait for r in self.values()), strict=True)
+        # a result read back may have been saved without them
+        candidates = [{**row, "pictures": dict(p)} if p else row for row, p in rows]
         return {**self._record, "candidates": candidates}
 
     @functools.cached_property
@@ -239,7 +238,7 @@ class Weighing(Mapping[str, Approximation]):
         known = ("title", "study", "created", "versions", "depth", "seed", "run_seconds", "data",
                  "caution")  # fmt: skip
         weighing = cls(results, chances, {key: record.get(key) for key in known})
-        weighing.__dict__["_record"] = record
+        weighing.__dict__["_record"] = numbers_only(record)
         return weighing
 
     def __repr__(self) -> str:

@@ -237,3 +237,80 @@ def hostile_record(name):
         columns={"candidate": f"a {name}"},
         data={"source": name, "fingerprint": "", "terms": 2, "columns": {}},
     )
+
+
+def make_pictures(name="rate", column="grams", **changes):
+    """Return the pictures' part of a candidate, as ``Weighing.to_dict(pictures=True)`` gives it."""
+    steps = [-4.0 + 0.2 * k for k in range(41)]
+    edges = [0.1 * k for k in range(13)]
+    bell = [math.exp(-0.5 * (k - 5.5) ** 2 / 4.0) for k in range(12)]
+    at = [float(k // 2) for k in range(20)]
+    middle = [10.0 * math.exp(-0.1 * x) for x in at]
+    profiles = [
+        {
+            "mode": mode,
+            "kind": kind,
+            "direction": f"0.71 log {name} - 0.70 log mass",
+            "steps": steps,
+            "log_density": [None if t < -3.8 else -0.5 * t**2 + 0.02 * t**3 for t in steps],
+            "gaussian": [-0.5 * t**2 for t in steps],
+        }
+        for mode in (1, 2)
+        for kind in ("loosest", "most skewed")
+    ]
+    return {
+        "profiles": profiles,
+        "marginals": [
+            {"parameter": name, "unit": "g", "edges": edges, "gaussian": bell, "refined": bell},
+            {"parameter": "mass", "unit": "", "edges": edges, "gaussian": bell, "refined": None},
+        ],
+        "source": "refined",
+        "predictions": [
+            {
+                "column": column,
+                "along": "days",
+                "rows": 20,
+                "at": at,
+                "observed": [y + 0.3 * (-1) ** k for k, y in enumerate(middle)],
+                "expected_mean": middle,
+                "expected_low": [y - 0.2 for y in middle],
+                "expected_high": [y + 0.2 for y in middle],
+                "new_mean": middle,
+                "new_low": [y - 0.8 for y in middle],
+                "new_high": [y + 0.8 for y in middle],
+            }
+        ],
+        "checks": [
+            {
+                "column": column,
+                "check": check,
+                "observed": 6.1,
+                "low": 5.9,
+                "high": 6.4,
+                "p_value": p,
+                "failed": p > 0.99,
+            }
+            for check, p in (("mean", 0.4), ("largest value", 0.999))
+        ],
+        "trouble": "",
+    } | changes
+
+
+def illustrated(record, **changes):
+    """Return a record whose candidates have pictures."""
+    candidates = [{**c, "pictures": make_pictures(**changes)} for c in record["candidates"]]
+    return {**record, "candidates": candidates}
+
+
+def illustrated_hostile(name):
+    """Return a record with pictures in which every text of the user's is the given one."""
+    record = illustrated(hostile_record(name), name=name, column=name)
+    texts = {"priors": {name: name}, "notes": {name: name}, "units": {name: name}}
+    candidates = [{**c, **texts} for c in record["candidates"]]
+    for candidate in candidates:
+        candidate["pictures"]["predictions"][0]["along"] = name
+        candidate["pictures"]["trouble"] = name
+    study = {"text": name, "path": name, "fingerprint": "ab12"}
+    columns = {name: {"shape": [2], "dtype": "float64"}}
+    data = {**record["data"], "columns": columns}
+    return {**record, "candidates": candidates, "study": study, "data": data}

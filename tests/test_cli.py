@@ -44,7 +44,9 @@ class FakeWeigh:
         if self.trouble is not None:
             raise self.trouble
         print("the likelihood prints")
-        return types.SimpleNamespace(to_dict=lambda: self.record, settled=self.record["settled"])
+        return types.SimpleNamespace(
+            to_dict=lambda **_: self.record, settled=self.record["settled"]
+        )
 
 
 @pytest.fixture
@@ -180,7 +182,10 @@ def test_an_interruption_leaves_nothing(weigh, study):
         ([], "Missing argument 'STUDY'"),
         (["study.py", "--depth", "deep"], "'deep' is not one of 'none', 'quick'"),
         (["study.py", "--seed", "-1"], "-1 is not in the range"),
-        (["study.py", "--save", "r.doc"], "one of .json, .csv, .md; got 'r.doc'"),
+        (
+            ["study.py", "--save", "r.doc"],
+            "one of .html, .json, .csv, .tex, .md, .png, .svg; got 'r.doc'",
+        ),
         (["study.py", "--only", "two pool"], "Did you mean 'two pools'?"),
         (["study.py", "--dept", "none"], "No such option"),
         (["study.py", "extra"], "unexpected extra argument"),

@@ -84,9 +84,7 @@ def _warnings(remarks: Iterable[tuple[str, Sequence[Remark]]]) -> list[str]:
 
 
 def _explained(explanations: Iterable[tuple[str, str]]) -> str:
-    items = "\n".join(
-        f"<li>{escape(heading)}: {safe(text)}</li>" for heading, text in explanations
-    )
+    items = "\n".join(f"<li>{escape(heading)}: {safe(text)}</li>" for heading, text in explanations)
     if not items:
         return ""
     return f"<details><summary>What the columns mean</summary>\n<ul>\n{items}\n</ul></details>"

@@ -1,4 +1,8 @@
-"""The record of a weighing as JSON text, and back: the form that keeps everything."""
+"""The record of a weighing as JSON text, and back: the form that keeps everything.
+
+``weighing.schema.json`` beside this file describes it. The ``pictures`` of a candidate are
+optional: a record without them is whole, and a page made of it has fewer pictures.
+"""
 
 from __future__ import annotations
 
@@ -11,7 +15,7 @@ from typing import Any
 from evidence.complaints import DataError, sentence
 from evidence.report.wording import short_name
 
-__all__ = ["FORMAT", "VERSION", "read_record", "record_from_json", "record_to_json"]
+__all__ = ["FORMAT", "VERSION", "numbers_only", "read_record", "record_from_json", "record_to_json"]
 
 FORMAT = "evidence weighing"
 VERSION = 1
@@ -51,6 +55,13 @@ _CANDIDATE_KEYS: dict[str, tuple[type, ...]] = {
 }
 # list of a candidate -> the text each of its entries must have
 _ENTRIES = {"warnings": "sentence", "posterior": "parameter", "audit": "rung"}
+# list in the pictures of a candidate -> what each of its entries must have
+_PICTURES = {
+    "profiles": ("mode", "kind", "direction", "steps", "log_density", "gaussian"),
+    "marginals": ("parameter", "edges", "gaussian"),
+    "predictions": ("column", "rows", "at"),
+    "checks": ("column", "check"),
+}
 
 
 def record_to_json(record: Mapping[str, Any]) -> str:
@@ -67,6 +78,12 @@ def record_to_json(record: Mapping[str, Any]) -> str:
         Plain ASCII with a newline at the end; names are kept exactly.
     """
     return json.dumps(_plain(record), indent=1, allow_nan=False) + "\n"
+
+
+def numbers_only(record: Mapping[str, Any]) -> dict[str, Any]:
+    """Return a record without what only its pictures need."""
+    kept = [{k: v for k, v in c.items() if k != "pictures"} for c in record["candidates"]]
+    return {**record, "candidates": kept}
 
 
 def _plain(value: Any) -> Any:
@@ -172,6 +189,7 @@ def _check_candidate(candidate: Any, where: str, source: str) -> None:
     if not isinstance(candidate, dict):
         raise DataError(_damaged(source, f"{where} is not an object"))
     _check_keys(candidate, _CANDIDATE_KEYS, where, source)
+    _check_pictures(candidate.get("pictures"), where, source)
     for key, text_key in _ENTRIES.items():
         if not all(_has_text(entry, text_key) for entry in candidate[key]):
             raise DataError(_damaged(source, f"{where} has an entry in {key!r} that is not one"))
@@ -180,6 +198,17 @@ def _check_candidate(candidate: Any, where: str, source: str) -> None:
         _has_text(direction, "combination") for direction in directions
     ):
         raise DataError(_damaged(source, f"{where} has a direction of curvature that is not one"))
+
+
+def _check_pictures(pictures: Any, where: str, source: str) -> None:
+    if pictures is None:
+        return
+    lists = [pictures.get(part) or [] for part in _PICTURES] if isinstance(pictures, dict) else [0]
+    for part, entries in zip(_PICTURES, lists, strict=False):
+        if not isinstance(entries, list) or not all(
+            isinstance(entry, dict) and set(_PICTURES[part]) <= set(entry) for entry in entries
+        ):
+            raise DataError(_damaged(source, f"{where} has {part} in its pictures that are none"))
 
 
 def _has_text(entry: Any, key: str) -> bool:

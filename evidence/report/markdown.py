@@ -6,7 +6,9 @@ import re
 from collections.abc import Iterable, Mapping
 from typing import Any
 
-from evidence.report.content import COLUMNS, HEADINGS, Remark, weighing_page
+from evidence.report.account import SAFETY, computation, prior_rows, unsaid
+from evidence.report.content import COLUMNS, HEADINGS, Remark, by_log_evidence, weighing_page
+from evidence.report.wording import short_name
 
 __all__ = ["escape_markdown", "record_to_markdown"]
 
@@ -27,6 +29,9 @@ def record_to_markdown(record: Mapping[str, Any]) -> str:
         _table(page.rows),
         *_warnings(page.remarks),
         *_explanations(page.explanations),
+        *_priors(record),
+        *_listed("Computation", [f"{x.term}: {x.text}" for x in computation(record)]),
+        *_listed("What this does not say", [*unsaid(record), SAFETY]),
         escape_markdown(page.facts),
     ]
     return "\n\n".join(blocks) + "\n"
@@ -67,3 +72,17 @@ def _warnings(remarks: Iterable[tuple[str, tuple[Remark, ...]]]) -> list[str]:
 def _explanations(explanations: Iterable[tuple[str, str]]) -> list[str]:
     items = [f"- {heading}: {escape_markdown(text)}" for heading, text in explanations]
     return ["## What the columns mean", "\n".join(items)] if items else []
+
+
+def _priors(record: Mapping[str, Any]) -> list[str]:
+    told = [
+        f"{short_name(candidate['candidate'])}, {name}: {prior}{f' ({reason})' if reason else ''}"
+        for candidate in by_log_evidence(record)
+        for name, prior, _, reason in prior_rows(candidate)
+    ]
+    return _listed("Priors", told)
+
+
+def _listed(heading: str, sentences: Iterable[str]) -> list[str]:
+    items = [f"- {escape_markdown(sentence)}" for sentence in sentences]
+    return [f"## {heading}", "\n".join(items)] if items else []

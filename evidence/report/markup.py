@@ -10,9 +10,10 @@ from evidence.report.content import Remark
 __all__ = ["safe", "table", "warning_items"]
 
 _WORDS = (
-    "candidate", "trust", "parameter", "unit", "note", "check", "agrees", "prior", "reason",
-    "column", "what is asked", "where it is answered", "verdict", "direction", "version",
+    "candidate", "trust", "parameter", "unit", "check", "agrees", "prior", "column", "verdict",
+    "what is asked",
 )  # fmt: skip
+_SENTENCES = ("note", "reason", "where it is answered")
 
 
 def safe(text: str) -> str:
@@ -22,9 +23,9 @@ def safe(text: str) -> str:
 
 def table(caption: str, headings: Sequence[str], rows: Iterable[Sequence[str]]) -> str:
     """Return a table with a caption and a scope for every heading."""
-    kinds = ["words" if heading in _WORDS else "number" for heading in headings]
+    kinds = [_kind(heading) for heading in headings]
     head = "".join(
-        f'<th scope="col" class="{kind if kind == "words" else "heading"}">{safe(heading)}</th>'
+        f'<th scope="col" class="{"heading" if kind == "number" else kind}">{safe(heading)}</th>'
         for kind, heading in zip(kinds, headings, strict=True)
     )
     body = "\n".join(f"<tr>{_row(kinds, row)}</tr>" for row in rows)
@@ -32,6 +33,12 @@ def table(caption: str, headings: Sequence[str], rows: Iterable[Sequence[str]]) 
         f"<table>\n<caption>{safe(caption)}</caption>\n<thead><tr>{head}</tr></thead>\n"
         f"<tbody>\n{body}\n</tbody>\n</table>"
     )
+
+
+def _kind(heading: str) -> str:
+    if heading in _SENTENCES:
+        return "words sentence"
+    return "words" if heading in _WORDS else "number"
 
 
 def _row(kinds: Sequence[str], row: Sequence[str]) -> str:

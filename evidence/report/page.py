@@ -108,7 +108,7 @@ def _comparison(record: Record) -> str:
         [
             _wide("Comparison of the candidates", headings, rows),
             _figure("overview", "overview", record),
-            f"<h3>What the columns mean</h3>\n<dl>\n{meant}\n</dl>" if meant else "",
+            f'<h3>What the columns mean</h3>\n<dl class="facts">\n{meant}\n</dl>' if meant else "",
         ],
     )
 
@@ -149,12 +149,14 @@ def _candidate(candidate: Record, place: int) -> str:
 
 
 def _predicted(candidate: Record, name: str) -> list[str]:
-    rows = account.check_rows(candidate)
+    rows, told = account.check_rows(candidate), short_name(candidate["candidate"])
     kind = "alert" if any(row[-1] == "fails" for row in rows) else "soft"
     return [
         _figure("predictions", name, candidate) if _pictures(candidate, "predictions") else "",
         f'<p class="{kind}">{safe(account.check_sentence(candidate))}</p>',
-        _wide("Posterior predictive checks", account.CHECK_HEADINGS, rows) if rows else "",
+        _wide(f"Posterior predictive checks of {told}", account.CHECK_HEADINGS, rows)
+        if rows
+        else "",
     ]
 
 
@@ -197,7 +199,7 @@ def _foundations(record: Record) -> str:
 def _limits(record: Record) -> str:
     items = "\n".join(f"<li>{safe(sentence)}</li>" for sentence in account.unsaid(record))
     checks = (
-        "<p class=\"soft\">A check compares a feature of the data with the same feature of data "
+        '<p class="soft">A check compares a feature of the data with the same feature of data '
         "simulated from the posterior; the p-value is the share of simulated data sets with a "
         "larger value, and a check fails below 0.01 or above 0.99. Such p-values are cautious "
         "(Gelman, Meng &amp; Stern 1996).</p>"
@@ -222,7 +224,8 @@ def _section(place: str, heading: str, blocks: Iterable[str]) -> str:
 def _wide(caption: str, headings: Sequence[str], rows: Iterable[Sequence[str]]) -> str:
     # wider than a telephone: it scrolls by itself, by keyboard too, and the page does not
     inner = table(caption, headings, rows)
-    return f'<div class="wide" role="region" aria-label="{_plain(caption)}" tabindex="0">{inner}</div>'
+    label = _plain(caption)
+    return f'<div class="wide" role="group" aria-label="{label}" tabindex="0">{inner}</div>'
 
 
 def _row(figures: Iterable[str]) -> str:

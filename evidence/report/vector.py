@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 from xml.etree import ElementTree
 
-from evidence.report.figures.canvas import FAINT, INK
+from evidence.report.figures.canvas import BLUE, FAINT, INK
 
 __all__ = ["inline_svg", "titled_svg"]
 
@@ -14,6 +14,8 @@ _LINK = "http://www.w3.org/1999/xlink"
 _HEAD = re.compile(r"^.*?(?=<svg\b)", re.DOTALL)
 _NUMBER = re.compile(r"-?\d+\.\d{3,}")
 _POINTER = re.compile(r"url\(#")
+# colours that the page sets by itself on dark paper
+_NAMED = {INK: "currentColor", FAINT: f"var(--faint, {FAINT})", BLUE: f"var(--blue, {BLUE})"}
 _PATHS = ("d", "points", "transform", "x", "y", "width", "height")
 
 
@@ -66,7 +68,8 @@ def _adapt(element: ElementTree.Element, name: str) -> None:
             value = f"#{name}-{value[1:]}"
         elif key in ("style", "clip-path", "fill", "stroke"):
             value = _POINTER.sub(f"url(#{name}-", value)
-            value = value.replace(INK, "currentColor").replace(FAINT, "var(--faint, #bfbfbf)")
+            for colour, named in _NAMED.items():
+                value = value.replace(colour, named)
         elif key in _PATHS:
             value = _NUMBER.sub(lambda match: f"{float(match.group()):.2f}", value)
         element.set(key, value)

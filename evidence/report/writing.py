@@ -7,7 +7,7 @@ import importlib.util
 import os
 import secrets
 import shutil
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -23,8 +23,16 @@ from evidence.report.json_form import record_to_json
 from evidence.report.markdown import record_to_markdown
 from evidence.report.wording import short_name
 
-__all__ = ["FORMS", "ILLUSTRATED", "check_suffix", "check_writable", "create_text", "save", "write_text"]
-
+__all__ = [
+    "FORMS",
+    "ILLUSTRATED",
+    "check_suffix",
+    "check_writable",
+    "create_text",
+    "save",
+    "show_pictures",
+    "write_text",
+]
 
 
 def _page(record: Mapping[str, Any]) -> str:
@@ -66,7 +74,8 @@ FORMS: dict[str, Callable[[Mapping[str, Any]], str | bytes]] = {
     ".png": _png,
     ".svg": _svg,
 }
-ILLUSTRATED = (".html", ".json")  # forms that hold the pictures' parts of the record
+# forms that show the pictures' parts of a record, or say what the predictive checks found
+ILLUSTRATED = (".html", ".json", ".tex", ".md")
 _DRAWN = (".html", ".png", ".svg")  # forms that need matplotlib
 _PATH_LIMIT = 400
 
@@ -114,6 +123,11 @@ def check_suffix(path: str | Path) -> str:
             f"Choose one of the known suffixes.{near_name(suffix, FORMS)}".rstrip("?"),
         )
     )
+
+
+def show_pictures(paths: Iterable[str | Path]) -> bool:
+    """Whether one of the forms shows what has to be computed for pictures and checks."""
+    return any(check_suffix(path) in ILLUSTRATED for path in paths)
 
 
 def check_writable(path: str | Path) -> None:

@@ -2,6 +2,7 @@
 
 import os
 import stat
+import sys
 
 import pytest
 
@@ -11,14 +12,40 @@ from evidence.report.json_form import read_record
 from tests.records import make_candidate, make_record
 
 
+KNOWN = r"one of \.html, \.json, \.csv, \.tex, \.md, \.png, \.svg; got"
+
+
 @pytest.mark.parametrize(
     ("name", "beginning"),
-    [("r.json", "{"), ("r.csv", "candidate,"), ("r.md", "# Litter"), ("R.JSON", "{")],
+    [
+        ("r.html", "<!DOCTYPE html>"),
+        ("r.json", "{"),
+        ("r.csv", "candidate,"),
+        ("r.tex", r"\documentclass"),
+        ("r.md", "# Litter"),
+        ("r.png", "\x89PNG"),
+        ("r.svg", "<?xml"),
+        ("R.JSON", "{"),
+    ],
 )
 def test_the_suffix_names_the_form(tmp_path, name, beginning):
     writing.save(make_record(), tmp_path / name)
-    assert (tmp_path / name).read_text().startswith(beginning)
+    assert (tmp_path / name).read_bytes().startswith(beginning.encode("latin-1"))
     assert os.listdir(tmp_path) == [name]
+
+
+@pytest.mark.parametrize("suffix", [".html", ".png", ".svg"])
+def test_pictures_without_matplotlib_are_refused_before_the_calculation(monkeypatch, suffix):
+    monkeypatch.setattr(writing.importlib.util, "find_spec", lambda _: None)
+    monkeypatch.setitem(sys.modules, "matplotlib", None)
+    with pytest.raises(ImportError, match=r"pip install 'laplace-model-evidence\[report\]'"):
+        writing.check_suffix(f"r{suffix}")
+    assert writing.check_suffix("r.json") == ".json"
+
+
+def test_which_forms_show_pictures():
+    assert writing.show_pictures(["a.csv", "b.HTML"])
+    assert not writing.show_pictures(["a.csv", "b.png"])
 
 
 def test_what_is_saved_can_be_read(tmp_path):
@@ -28,7 +55,7 @@ def test_what_is_saved_can_be_read(tmp_path):
 
 @pytest.mark.parametrize("name", ["r.xlsx", "r", "r.jsn", ".json"])
 def test_an_unknown_suffix_lists_the_known_ones(tmp_path, name):
-    with pytest.raises(DeclarationError, match=r"one of \.json, \.csv, \.md.*; got"):
+    with pytest.raises(DeclarationError, match=KNOWN):
         writing.save(make_record(), tmp_path / name)
     assert os.listdir(tmp_path) == []
 

@@ -10,7 +10,7 @@ import contextlib
 import functools
 import io
 import warnings
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from typing import TYPE_CHECKING, Any
 
 from evidence.complaints import load_optional
@@ -41,6 +41,7 @@ TALLEST = 235 / 25.4  # a page's text [inch]
 BLUE, ORANGE, GREEN, VERMILLION = "#0072b2", "#e69f00", "#009e73", "#d55e00"
 INK, FAINT = "#1a1a1a", "#bfbfbf"
 DPI = 300
+_METADATA = ("Date", "Creator", "Format", "Type")  # none of it: a date would differ each time
 
 _STYLE = {
     "font.family": ["sans-serif"],
@@ -109,8 +110,8 @@ def picture(draw: Callable[..., Figure]) -> Callable[..., Figure]:
     def drawn(*arguments: Any, **options: Any) -> Figure:
         with own_style():
             figure = draw(*arguments, **options)
-            # once here, so that ticks made while drawing are made in this style as well
-            figure.draw_without_rendering()
+            # once here, so that its ticks are made in this style as well
+            figure.get_layout_engine().execute(figure)
             for fit in getattr(figure, "evidence_fits", ()):
                 fit()
             figure.set_layout_engine("none")
@@ -155,17 +156,19 @@ def note_below(axes: Axes, text: str) -> None:
 
 def to_png(figure: Figure) -> bytes:
     """Return a figure as PNG, 300 dots per inch, on white paper."""
-    return _printed(figure, "png", facecolor="white", metadata={"Software": None})
+    out = io.BytesIO()
+    with own_style():
+        figure.savefig(out, format="png", facecolor="white", metadata={"Software": None})
+    return out.getvalue()
 
 
 def to_svg(figure: Figure) -> str:
-    """Return a figure as SVG with its words as text; the same figure gives the same bytes."""
-    nothing: Mapping[str, None] = {"Date": None, "Creator": None, "Format": None, "Type": None}
-    return _printed(figure, "svg", facecolor="none", metadata=dict(nothing)).decode()
+    """Return a figure as SVG with its words as text; the same figure gives the same text."""
+    from matplotlib.backends.backend_svg import FigureCanvasSVG
 
-
-def _printed(figure: Figure, form: str, **options: Any) -> bytes:
-    out = io.BytesIO()
+    out, before = io.BytesIO(), figure.canvas
     with own_style():
-        figure.savefig(out, format=form, **options)
-    return out.getvalue()
+        # savefig would draw twice
+        FigureCanvasSVG(figure).print_svg(out, metadata=dict.fromkeys(_METADATA))
+    figure.set_canvas(before)
+    return out.getvalue().decode()

@@ -120,7 +120,5 @@ def _one_split(axes: Axes, y: int, z: float, fit: float, error: float, *, doubte
         axes.plot(fit, y, "o", markerfacecolor="none", markeredgecolor=GREEN, zorder=3)
     colour = VERMILLION if doubted else BLUE
     if not math.isnan(error):
-        axes.errorbar(
-            z, y, xerr=_ERRORS * error, color=INK, elinewidth=0.7, capsize=2.0, zorder=2
-        )
+        axes.errorbar(z, y, xerr=_ERRORS * error, color=INK, elinewidth=0.7, capsize=2.0, zorder=2)
     axes.plot(z, y, "D" if doubted else "o", color=colour, zorder=4)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
@@ -49,7 +50,7 @@ def marginals(found: Sequence[Mapping[str, Any]]) -> Figure:
 
 def _draw(axes: Axes, one: Mapping[str, Any]) -> None:
     edges = one["edges"]
-    middle = [0.5 * (a + b) for a, b in zip(edges, edges[1:], strict=False)]
+    middle = [0.5 * (a + b) for a, b in itertools.pairwise(edges)]
     if one.get("refined"):
         axes.fill_between(
             middle, one["refined"], color=BLUE, alpha=0.3, linewidth=0.7, label="refined"

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
@@ -105,8 +106,8 @@ def _is_line(at: Sequence[float], middle: Sequence[float]) -> bool:
     reach = max(middle) - min(middle)
     if not reach > 0.0:
         return True
-    steps = [abs(b - a) for a, b in zip(middle, middle[1:], strict=False)]
-    ties = [s for s, a, b in zip(steps, at, at[1:], strict=False) if a == b]
+    steps = [abs(b - a) for a, b in itertools.pairwise(middle)]
+    ties = [s for s, (a, b) in zip(steps, itertools.pairwise(at), strict=True) if a == b]
     if ties and max(ties) > 0.01 * reach:
         return False
     return sum(steps) / reach <= max(_ROUGH, len(set(at)) / _LEAST_PER_TURN)
