@@ -78,7 +78,7 @@ def own_cluster(workers: int) -> Iterator[Any]:
     with (
         dask.config.set({"distributed.nanny.pre-spawn-environ": environment}),
         distributed.LocalCluster(
-            n_workers=workers, threads_per_worker=1, processes=True, dashboard_address=None
+            n_workers=workers, threads_per_worker=1, processes=True, dashboard_address=":0"
         ) as cluster,
         distributed.Client(cluster) as client,
     ):

@@ -18,6 +18,7 @@ __all__ = ["learn_settings"]
 
 PILOTS = 5  # data sets whose modes are looked for from many starts
 TRIED = 8  # data sets tried until one suits all candidates
+ROUNDED = 6  # decimals of a start, in prior sd
 BLOCK_BYTES = 64 * 2**20
 
 
@@ -97,8 +98,11 @@ def _starts(
     if most == 0:
         return np.array([problem.centre if problem.start is None else problem.start])
     if most == 1:
-        return np.median([modes[0] for modes in found if modes], axis=0)[None]
-    return np.array(next(modes for modes in found if len(modes) == most))
+        starts = np.median([modes[0] for modes in found if modes], axis=0)[None]
+    else:
+        starts = np.array(next(modes for modes in found if len(modes) == most))
+    # the same digits whichever driver found the modes, so that a resumed run gives them again
+    return np.round(starts / problem.spread, ROUNDED) * problem.spread
 
 
 def _block(part_size: int, dim: int) -> int:
