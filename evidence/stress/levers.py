@@ -175,7 +175,7 @@ def _of_field(model: Model, parameter: str, prior: Any, field: str, label: str) 
         value=np.nan if matrix else _single(value),
         step=float(step[0]) if len(step) == 1 else np.nan,
         entries=int(value.shape[-1] if matrix else np.size(value)),
-        width=_width(prior, field),
+        width=_width(field),
         move=move,
     )
 
@@ -263,7 +263,7 @@ def _unit(unit: str, field: str) -> str:
     return unit
 
 
-def _width(prior: Any, field: str) -> int:
+def _width(field: str) -> int:
     """How the prior's width follows a scale: 1, -1, or 0 where it changes the shape instead."""
     last = field.split(".")[-1]
     if last == "rate":

@@ -301,9 +301,7 @@ def _note(
     return "; ".join(notes)
 
 
-def _single(
-    standing: Standing, effects: list[LeverEffect], audit: bool
-) -> JointChange | None:
+def _single(standing: Standing, effects: list[LeverEffect], audit: bool) -> JointChange | None:
     tipping = [effect for effect in effects if np.isfinite(effect.step)]
     if not tipping:
         return None

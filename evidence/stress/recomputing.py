@@ -94,9 +94,7 @@ class Recomputed:
         problem = self.problem_at(levers, steps)
         depth = "quick" if self.approximation.depth == "quick" else "standard"
         with np.errstate(all="ignore"):
-            result = fit(
-                problem.model, problem.arrays, depth=depth, seed=self.approximation.seed
-            )
+            result = fit(problem.model, problem.arrays, depth=depth, seed=self.approximation.seed)
         return result.log_evidence, result.standard_error
 
     def slope(self, levers: Sequence[Lever], steps: Sequence[float], index: int) -> float:

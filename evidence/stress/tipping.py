@@ -42,9 +42,7 @@ class Root:
     lost_at: float = np.nan
 
 
-def nearest_root(
-    lead: Callable[[float], float], known: dict[float, float] | None = None
-) -> Root:
+def nearest_root(lead: Callable[[float], float], known: dict[float, float] | None = None) -> Root:
     """Find the change of smallest size at which a lead is zero.
 
     Parameters

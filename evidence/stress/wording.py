@@ -81,9 +81,7 @@ def prior_summary(result: Any) -> str:
 
 
 def _unconfirmed(result: Any) -> str:
-    doubted = [
-        x for x in (result.single, result.joint) if x is not None and x.confirmed is False
-    ]
+    doubted = [x for x in (result.single, result.joint) if x is not None and x.confirmed is False]
     if not doubted:
         return ""
     worst = max(doubted, key=lambda x: abs(x.audited))
