@@ -1,5 +1,6 @@
 """The page, parsed: order, escaping, what it carries and what it says."""
 
+import itertools
 import re
 from html.parser import HTMLParser
 
@@ -91,7 +92,7 @@ def test_headings_are_in_order(page):
     levels = [level for level, _ in page.headings]
     assert levels[0] == 1
     assert levels.count(1) == 1
-    assert all(b <= a + 1 for a, b in zip(levels, levels[1:], strict=False))
+    assert all(b <= a + 1 for a, b in itertools.pairwise(levels))
     second = [words for level, words in page.headings if level == 2]
     assert second == [
         "Comparison", "one pool", "two pools", "power law", "no loss", "What the numbers rest on",

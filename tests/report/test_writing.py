@@ -11,7 +11,6 @@ from evidence.report import writing
 from evidence.report.json_form import read_record
 from tests.records import make_candidate, make_record
 
-
 KNOWN = r"one of \.html, \.json, \.csv, \.tex, \.md, \.png, \.svg; got"
 
 

@@ -25,6 +25,10 @@ if TYPE_CHECKING:
 __all__ = ["spectrum"]
 
 _MOST = 12
+_RAISED = str.maketrans(
+    "0123456789-", "\u2070\u00b9\u00b2\u00b3\u2074\u2075\u2076\u2077\u2078\u2079\u207b"
+)
+_EDGE = 0.15  # of an axis on either side, where a number would stick out
 
 
 @picture
@@ -36,7 +40,7 @@ def spectrum(directions: Sequence[Mapping[str, Any]]) -> Figure:
     directions : list of dict
         ``combination``, ``sd``, ``share_from_data``; the loosest first.
     """
-    rows = [row for row in directions if number(row.get("sd")) > 0.0][:_MOST]
+    rows = [row for row in directions if 0.0 < number(row.get("sd")) < math.inf][:_MOST]
     if not rows:
         figure, (axes,) = new_figure(height=0.8)
         note_below(axes, "no positive definite Hessian")
@@ -49,9 +53,9 @@ def spectrum(directions: Sequence[Mapping[str, Any]]) -> Figure:
     known = any([_draw_share(axes, y, row) for y, row in enumerate(rows)])
     curvature = [number(row["sd"]) ** -2.0 for row in rows]
     right.semilogx(curvature, range(len(rows)), "o", color=INK)
-    right.set_xlim(min(curvature) / 3.0, max(curvature) * 3.0)
-    right.xaxis.set_major_locator(_decades(curvature))
-    right.xaxis.set_major_formatter(lambda x, _: f"{x:.0e}" if not 1e-2 < x < 1e4 else f"{x:g}")
+    right.set_xlim(min(curvature) / 5.0, max(curvature) * 5.0)
+    right.set_xticks(_decades(*right.get_xlim()))
+    right.xaxis.set_major_formatter(lambda x, _: _power(x))
     right.minorticks_off()
     right.set_xlabel("curvature [nats]")
     axes.set_xlim(0.0, 1.0)
@@ -79,13 +83,18 @@ def _draw_share(axes: Axes, y: int, row: Mapping[str, Any]) -> bool:
     return True
 
 
-def _decades(values: Sequence[float]) -> Any:
-    """At most three powers of ten over the range: more would touch."""
-    from matplotlib.ticker import FixedLocator
+def _decades(low: float, high: float) -> list[float]:
+    """One to three powers of ten well inside the range: others would touch what is beside it."""
+    lowest, width = math.log10(low), math.log10(high) - math.log10(low)
+    first, last = math.ceil(lowest + _EDGE * width), math.floor(lowest + (1.0 - _EDGE) * width)
+    step = max(1, math.ceil((last - first + 1) / 3))
+    return [10.0**k for k in range(first, last + 1, step)]
 
-    low, high = math.floor(math.log10(min(values) / 3)), math.ceil(math.log10(max(values) * 3))
-    step = max(1, math.ceil((high - low) / 3))
-    return FixedLocator([10.0**k for k in range(low, high + 1, step)])
+
+def _power(x: float) -> str:
+    if 1e-3 < x < 1e4:
+        return f"{x:g}"
+    return "10" + str(round(math.log10(x))).translate(_RAISED)
 
 
 def _value(row: Mapping[str, Any]) -> str:
