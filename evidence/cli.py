@@ -225,6 +225,50 @@ def weigh_many(study_path: str, data_path: str, store: str, quiet: bool, **optio
     return DOUBTED if trust.get("doubtful") or trust.get("failed") else OK
 
 
+@main.command(epilog=_STATUS)
+@click.argument("study_path", metavar="STUDY")
+@click.option("--data", "data_path", metavar="FILE", help="Use this file for the study's own.")
+@click.option(
+    "--part",
+    type=click.Choice(("both", "priors", "observations")),
+    default="both",
+    show_default=True,
+    help="What is moved.",
+)
+@click.option(
+    "--save",
+    "saves",
+    metavar="PATH",
+    multiple=True,
+    help="Write the result to PATH, .json or, of one part, .csv. May be given more than once.",
+)
+@click.option("--depth", type=click.Choice(DEPTHS), default="standard", show_default=True,
+              help="How far each log evidence is checked.")  # fmt: skip
+@click.option("--only", metavar="NAME", multiple=True,
+              help="Weigh only this candidate. May be given more than once.")  # fmt: skip
+@click.option("--seed", type=click.IntRange(0, 2**32 - 1), default=0, show_default=True,
+              help="Seed of the random draws.")  # fmt: skip
+@_as_json
+@click.option("--quiet", is_flag=True, help="Show neither the result nor the progress.")
+@_debug
+@reporting
+def stress(study_path: str, saves: tuple[str, ...], part: str, as_json: bool, quiet: bool,
+           **options: Any) -> int:  # fmt: skip
+    """Find what would overturn the verdict of a STUDY: other priors, fewer observations."""
+    _check_stress_saves(saves, part)
+    found, doubted = _stress_study(study_path, part, quiet=quiet, **options)
+    from evidence.stress.command import save_stress
+
+    save_stress(found, saves)
+    if as_json:
+        click.echo(found.to_json(), nl=False)
+    elif not quiet:
+        from evidence.report.wording import visible
+
+        click.echo("\n".join(map(visible, repr(found).split("\n"))))
+    return DOUBTED if doubted else OK
+
+
 @main.command()
 @click.argument("result_path", metavar="RESULT")
 @_saves
@@ -333,6 +377,45 @@ def _weigh_study(
             if pictures:
                 progress("preparing the pictures")
             return weighing.to_dict(pictures=pictures)
+
+
+def _check_stress_saves(saves: tuple[str, ...], part: str) -> None:
+    if not saves:
+        return
+    from evidence.complaints import DeclarationError
+    from evidence.stress.command import check_paths
+
+    try:
+        check_paths(saves, part)
+    except DeclarationError as error:
+        raise click.BadParameter(str(error), param_hint="--save") from None
+
+
+def _stress_study(
+    study_path: str,
+    part: str,
+    *,
+    data_path: str | None,
+    only: tuple[str, ...],
+    depth: str,
+    seed: int,
+    quiet: bool,
+) -> tuple[Any, bool]:
+    """The stress of a study's verdict, and whether a number behind it is doubtful or failed."""
+    from evidence.report.progress import ProgressLine
+
+    with ProgressLine(wanted=not quiet) as progress, _printing_to_stderr():
+        progress("reading the study")
+        from evidence.study import read_study
+
+        study = _narrowed(read_study(study_path, data_path), only)
+        from evidence.stress.command import stress_parts
+        from evidence.weighing import weigh as weigh_models
+
+        with _without_repeated_warnings(), _staying():
+            weighing = weigh_models(study, depth=depth, seed=seed, progress=progress)
+            found = stress_parts(weighing, part, progress)
+    return found, any(r.trust in ("doubtful", "failed") for r in weighing.values())
 
 
 def _narrowed(study: Study, only: tuple[str, ...]) -> Study:

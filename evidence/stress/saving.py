@@ -14,7 +14,7 @@ from evidence.report.json_form import record_to_json
 from evidence.report.wording import short_name, visible
 from evidence.report.writing import write_text
 
-__all__ = ["SUFFIXES", "check_suffix", "frame", "save"]
+__all__ = ["SUFFIXES", "check_suffix", "frame", "rows_to_csv", "save"]
 
 SUFFIXES = (".json", ".csv")
 _FORMULA_SIGNS = ("=", "+", "-", "@")  # a spreadsheet would run a text that begins so
