@@ -25,6 +25,8 @@ HASHED_BYTES = 64 * 2**20  # larger arrays go by identity and a sample
 SAMPLED_ITEMS = 4096
 DEPTH_LIMIT = 60
 OWN_PACKAGE = __name__.split(".")[0]
+# ready parts are closures over what the user chose: read as the user's own
+READY_PARTS = f"{OWN_PACKAGE}.shelf"
 ARRAY_LIBRARIES = frozenset({"jax", "numpy", "scipy"})
 _PLAIN = (type(None), bool, int, float, complex, str, bytes)
 _SEQUENCES = (list, tuple, set, frozenset, collections.deque)
@@ -271,7 +273,7 @@ def _root(module: str | None) -> str:
 
 def _is_users(module: str | None) -> bool:
     """Whether a module is the user's own, by its place outside the installed libraries."""
-    if module is None or module == "__main__":
+    if module is None or module == "__main__" or module.startswith(READY_PARTS):
         return True
     if module.split(".")[0] in sys.stdlib_module_names | {OWN_PACKAGE}:
         return False
