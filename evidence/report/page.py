@@ -201,7 +201,7 @@ def _limits(record: Record) -> str:
     checks = (
         '<p class="soft">A check compares a feature of the data with the same feature of data '
         "simulated from the posterior; the p-value is the share of simulated data sets with a "
-        "larger value, and a check fails below 0.01 or above 0.99. Such p-values are cautious "
+        "larger value, and a check fails below 0.005 or above 0.995. Such p-values are cautious "
         "(Gelman, Meng &amp; Stern 1996).</p>"
     )
     return _section("limits", "What this does not say", [f"<ul>\n{items}\n</ul>", checks])
