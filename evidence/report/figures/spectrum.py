@@ -59,7 +59,7 @@ def spectrum(directions: Sequence[Mapping[str, Any]]) -> Figure:
     right.minorticks_off()
     right.set_xlabel("curvature [nats]")
     axes.set_xlim(0.0, 1.0)
-    axes.set_xlabel("share of it" if known else "shares unknown")
+    axes.set_xlabel("share of the curvature" if known else "shares unknown")
     axes.set_title("directions of the Hessian, the loosest first", loc="left")
     if known:
         handles, labels = axes.get_legend_handles_labels()
