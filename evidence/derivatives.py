@@ -130,15 +130,12 @@ class EvidenceFunction:
                 stacklevel=3,
             )
         with float64():
-            scale = Scale(self.problem.centre, self.problem.spread)
-            found = evidences(
-                self.problem.density,
-                jnp.asarray(self.starts),
-                scale,
-                *arguments,
-                second_order=self.second_order,
-            )
-            return found.total.astype(ambient)
+            return self._jitted(*self._own(arguments)).astype(ambient)
+
+    @functools.cached_property
+    def _jitted(self) -> Callable[..., Any]:
+        # a transformation that is not inside jit would compile each operation by itself
+        return jax.jit(_value(self.problem.density, second_order=self.second_order))
 
     def _own(self, arguments: tuple[Any, Any, Any]) -> tuple[Any, ...]:
         scale = Scale(self.problem.centre, self.problem.spread)

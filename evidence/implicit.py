@@ -90,6 +90,10 @@ def evidences(
         Whether the second-order term is computed as well: 2d Hessians more per mode.
     """
 
+    if density.layout.dim == 0:
+        value = density.log_density(jnp.zeros(0), hyper, data, weights)
+        return Evidences(value[None], jnp.zeros(1), jnp.zeros((1, 0)))
+
     def one(start: Any) -> Any:
         return _at_one_mode(density, start, scale, (hyper, data, weights), second_order)
 
@@ -104,7 +108,7 @@ def _at_one_mode(
     peak = _differentiable_peak(density)(start, scale, arguments)
     lost = ~peak.settled
     term = jnp.zeros(())
-    if second_order and density.layout.dim:
+    if second_order:
         # what is left of a lost mode must not make the sum nan
         hessian = _safe(density.evaluate(peak.z, *arguments).hessian, peak.settled)
         term = jnp.where(lost, 0.0, _second_order(density, peak.z, hessian, arguments))
@@ -235,6 +239,6 @@ def _without_repeats(laplace: Any, z: Any, hessian: Any) -> Any:
         return laplace
     step = jax.lax.stop_gradient(z[:, None, :] - z[None, :, :])
     square = jnp.einsum("ijk,jkl,ijl->ij", step, jax.lax.stop_gradient(hessian), step)
-    near = square < SAME_MODE**2 * max(z.shape[1], 1)
+    near = square < SAME_MODE**2 * z.shape[1]
     earlier = np.tri(len(laplace), k=-1, dtype=bool) & jnp.isfinite(laplace)[None, :]
     return jnp.where(jnp.any(near & earlier, axis=1), -jnp.inf, laplace)

@@ -24,7 +24,7 @@ if TYPE_CHECKING:
 
 __all__ = ["COLUMNS", "PriorStress", "stress_priors"]
 
-CLOSE_TO_ONE = 0.2  # how near to -1 per parameter the slope in log width names the effect
+CLOSE_TO_ONE = 0.2  # how near to the log of the factor a twice as wide prior must cost, relative
 COLUMNS = {
     "candidate": "name of the candidate whose declaration is moved",
     "hyperparameter": "what is moved; an array moves as a whole",
@@ -270,7 +270,7 @@ def _effect(standing: Standing, lever: Lever) -> LeverEffect:
         step=root,
         overtaken_by=over,
         leads=leads,
-        note=_note(standing, lever, derivative, lost, rival),
+        note=_note(standing, lever, halved if lever.width < 0 else doubled, lost, rival),
     )
 
 
@@ -285,12 +285,10 @@ def _lead_along(
     return along
 
 
-def _note(
-    standing: Standing, lever: Lever, derivative: float, lost: float, rival: str | None
-) -> str:
+def _note(standing: Standing, lever: Lever, widened: float, lost: float, rival: str | None) -> str:
     notes = []
     shared = rival is not None and lever.parameter in standing.parameters(rival)
-    cost = derivative * lever.width / lever.entries if lever.width else np.nan
+    cost = widened / float(np.log(2.0)) / lever.entries if lever.width else np.nan
     if rival is not None and not shared and abs(cost + 1.0) <= CLOSE_TO_ONE:
         notes.append(
             f"Jeffreys-Lindley effect: {rival} has no {lever.parameter}, and each widening of its "

@@ -20,7 +20,7 @@ __all__ = ["LIMIT", "nearest_point", "nearest_root"]
 
 LIMIT = float(np.log(FACTOR_LIMIT))
 GRID = np.log([2.0, 5.0, 15.0, 40.0, FACTOR_LIMIT])
-EQUAL = 1e-9  # nats: a root is closed in to this
+EVEN = 1e-9  # nats: a lead that is none
 ITERATIONS = 30
 STANDS = 1e-3  # relative change of the point at which the iteration ends
 
@@ -55,6 +55,8 @@ def nearest_root(lead: Callable[[float], float], known: dict[float, float] | Non
     known = {} if known is None else known
     start = known.get(0.0, np.nan)
     start = lead(0.0) if np.isnan(start) else start
+    if start <= EVEN:
+        return Root(step=0.0)
     before = {1.0: (0.0, start), -1.0: (0.0, start)}
     lost = np.nan
     for size in GRID:

@@ -54,6 +54,8 @@ def prior_summary(result: Any) -> str:
     """What would overturn the verdict, in a sentence or three."""
     if result.runner_up is None:
         return f"{result.leader} has no rival that could overtake it."
+    if result.single is not None and result.single.norm == 0:
+        return f"{result.leader} and {result.runner_up} are even: any change decides between them."
     if result.single is None:
         text = (
             f"The verdict for {result.leader} holds under every change of a single number within a "
