@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import dataclasses
 import threading
 from collections.abc import Mapping
 from typing import Any
 
+import jax
 import numpy as np
 
 from evidence.approximation import fit
@@ -13,7 +15,7 @@ from evidence.batches.answers import Answers, Settings
 from evidence.batches.density import Given, RowDensity
 from evidence.batches.findings import TRUST_CODE, Finding
 from evidence.batches.parts import Group, Part, group_by_shape
-from evidence.batches.programs import Programs
+from evidence.batches.programs import Programs, signature
 from evidence.batches.ragged import check_terms, is_row_wise
 from evidence.batches.work import RETRIES, Bench, Work, filled
 from evidence.compiling import on_device
@@ -26,6 +28,8 @@ from evidence.problem import Problem
 
 __all__ = ["Candidate"]
 
+PILOTS = 16  # data sets whose modes are looked for from many starts
+ROUNDED = 6  # decimals of a start, in prior sd
 MOST_LENGTHS = 12  # lengths for which a candidate that is not row by row is compiled
 
 
@@ -38,7 +42,6 @@ class Candidate:
         self.terms = self.problem.terms
         self._lock = threading.Lock()
         self._hyper = model.hyperparameters()
-        self._classes: dict[int, bool] = {}
         self._lengths: set[int] = set()
         self._exact = False
         self._prior_reads_data = any(
@@ -49,11 +52,35 @@ class Candidate:
             density=RowDensity(model, self.problem.layout),
             programs=Programs(model),
             settings=settings,
-            starts=settings.starts[model.name],
+            starts=settings.starts.get(model.name, np.zeros((1, self.problem.dim))),
             offsets=(starting_points(self.problem, RETRIES, settings.seed) - centre) / spread,
             terms=self.terms,
             spread_known=self.problem.spread_known,
         )
+
+    def learn_starts(self, part: Part) -> np.ndarray:
+        """Search some data sets of a part from many starts; return, and use, (M, d) starts.
+
+        Where a pilot has several modes each is followed in every data set; otherwise the median
+        of the pilots' modes is the start.
+        """
+        groups, _ = self._groups(part)
+        problem = self.problem
+        starts = np.array([problem.centre if problem.start is None else problem.start])
+        if groups and problem.dim:
+            group = max(groups, key=lambda g: len(g.places))
+            own = np.unique(np.linspace(0, len(group.places) - 1, PILOTS).astype(int))
+            work = self._work(part, group, own)
+            modes = [m for m in work.explore() if len(m)]
+            most = max(map(len, modes), default=0)
+            if most == 1:
+                starts = np.median(modes, axis=0)
+            elif most > 1:
+                starts = next(m for m in modes if len(m) == most)
+            # fewer digits: what rounding does must not depend on the machine at hand
+            starts = np.round(starts / problem.spread, ROUNDED) * problem.spread
+        self._bench = dataclasses.replace(self._bench, starts=starts)
+        return starts
 
     def solve(self, part: Part) -> tuple[Answers, dict[int, tuple[int, str]]]:
         """Log evidence of each data set of a part; also which did not fit, and why."""
@@ -85,16 +112,24 @@ class Candidate:
         schema = self.settings.schema
         size = len(group.columns[next(iter(schema.rows))][0])
         with self._lock:
-            if size not in self._classes:
-                shortest = int(np.argmin(group.kept))
-                data = part.data_set(group.places[shortest])
-                data = {name: np.asarray(data[name], group.columns[name].dtype)
-                        for name in schema.shapes}  # fmt: skip
-                points = self.problem.centre + np.array([[0.1], [-0.3]]) * self.problem.spread
-                self._classes[size] = is_row_wise(
-                    self._bench.density, self._given({}, None), data, size, schema, points
-                )
-            return self._classes[size]
+            return self.model.programs.get(
+                (
+                    "row by row",
+                    size,
+                    self._bench.programs.key,
+                    signature(group.columns),
+                    schema.rows,
+                ),
+                lambda: self._is_row_wise(part, group, size),
+            )
+
+    def _is_row_wise(self, part: Part, group: Group, size: int) -> bool:
+        schema = self.settings.schema
+        data = part.data_set(group.places[int(np.argmin(group.kept))])
+        data = {k: np.asarray(data[k], group.columns[k].dtype) for k in schema.shapes}
+        points = self.problem.centre + np.array([[0.1], [-0.3]]) * self.problem.spread
+        given = self._given({}, None)
+        return is_row_wise(self._bench.density, given, data, size, schema, points)
 
     def _count_lengths(self, part: Part, groups: list[Group]) -> None:
         schema = self.settings.schema
@@ -120,13 +155,20 @@ class Candidate:
     def _solve_group(self, part: Part, group: Group, answers: Answers) -> None:
         block = self.settings.block
         for first in range(0, len(group.places), block):
-            own = slice(first, first + block)
-            columns = {name: filled(x[own], block) for name, x in group.columns.items()}
-            kept = None if group.kept is None else filled(group.kept[own], block)
-            given = on_device(self._given(columns, kept))
+            own = np.arange(first, min(first + block, len(group.places)))
             places = group.places[own]
-            work = Work(self._bench, given, *self._prior_scale(part, places))
-            work.answer(answers, places, part.first + places)
+            self._work(part, group, own).answer(answers, places, part.first + places)
+
+    def _work(self, part: Part, group: Group, own: np.ndarray) -> Work:
+        """Some data sets of a group, on the device."""
+        block = self.settings.block
+        whole = len(own) == len(group.places)
+        columns, kept = (group.columns, group.kept) if whole else jax.tree_util.tree_map(
+            lambda x: x[own], (group.columns, group.kept)
+        )  # fmt: skip
+        columns, kept = jax.tree_util.tree_map(lambda x: filled(x, block), (columns, kept))
+        given = on_device(self._given(columns, kept))
+        return Work(self._bench, given, *self._prior_scale(part, group.places[own]))
 
     def _prior_scale(self, part: Part, places: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Prior centre and spread (k, d) of each data set."""

@@ -36,7 +36,7 @@ __all__ = [
 ]
 
 PROBED = (1.0, 2.0, 3.0)  # sd along each axis, both ways
-MOST_BROAD = 32
+MOST_BROAD = 24
 NUMBERS = 7  # in a packed row of looks, before the scales
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import dataclasses
 import os
 import time
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
@@ -146,16 +147,13 @@ class _Run:
     def results(self, client: Any, workers: int) -> Iterator[PartResult]:
         """The parts that were not finished before, as they get ready."""
         raws = enumerate(self.source.parts(self.asked["part_size"]))
-        begun, settings = self._begin(raws)
-        if settings is None:
-            return
+        begun, settings, candidates = self._begin(raws)
         tasks = self._unfinished(_chain(begun, raws))
         if client is not None:
             from evidence.batches.cluster import on_cluster
 
             results = on_cluster(client, self.given, self.models, settings, self.chances, tasks)
         else:
-            candidates = [Candidate(model, settings) for model in self.models]
             results = in_threads(
                 lambda task: solve_part(candidates, task[0], task[1].load(), self.chances),
                 tasks,
@@ -167,19 +165,21 @@ class _Run:
 
     def _begin(
         self, raws: Iterator[tuple[int, Raw]]
-    ) -> tuple[list[tuple[int, Raw]], Settings | None]:
+    ) -> tuple[list[tuple[int, Raw]], Settings, list[Candidate]]:
         """Read on until there is a data set that can be used, and learn from it."""
         begun: list[tuple[int, Raw]] = []
         reason = "there are none"
         for index, raw in raws:
-            begun.append((index, raw))
             part = raw.load()
+            begun.append((index, raw.loaded(part)))
             if part.good():
                 settings = learn_settings(
                     self.models, part, self.shared, depth=self.asked["depth"],
                     seed=self.asked["seed"], part_size=self.asked["part_size"],
                 )  # fmt: skip
-                return begun, settings
+                candidates = [Candidate(model, settings) for model in self.models]
+                starts = {c.model.name: c.learn_starts(part) for c in candidates}
+                return begun, dataclasses.replace(settings, starts=starts), candidates
             reason = next(iter(part.bad.values()))[1]
         raise DataError(sentence("no data set can be used", reason))
 

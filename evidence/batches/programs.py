@@ -29,7 +29,7 @@ class Programs:
 
     def __init__(self, model: Model) -> None:
         self._model = model
-        self._reading = model.reading()
+        self.key = (model.reading(), signature(model.hyperparameters()))
 
     def run(
         self,
@@ -53,7 +53,7 @@ class Programs:
         most_slots : int
             More would not be used.
         """
-        key = ("batch", kind, most_slots, self._reading, signature(arguments))
+        key = ("batch", kind, most_slots, self.key, signature(arguments))
         with _LOCK:  # two threads that want the same program compile it once
             program = self._model.programs.get(
                 key, lambda: _sized(build, arguments, bytes_per_slot, most_slots)

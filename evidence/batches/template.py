@@ -1,4 +1,4 @@
-"""What is learned from the first data sets: their shape, and where to start in all others."""
+"""What is learned from the first data sets before a run: their shape, and how to cut them."""
 
 from __future__ import annotations
 
@@ -10,15 +10,12 @@ from evidence.batches.answers import Settings
 from evidence.batches.parts import Part, learn_schema
 from evidence.candidates import check_same_terms
 from evidence.complaints import DeclarationError
-from evidence.mode import MATTERS, find_modes
 from evidence.model import Model
 from evidence.problem import Problem
 
 __all__ = ["learn_settings"]
 
-PILOTS = 5  # data sets whose modes are looked for from many starts
 TRIED = 8  # data sets tried until one suits all candidates
-ROUNDED = 6  # decimals of a start, in prior sd
 BLOCK_BYTES = 64 * 2**20
 
 
@@ -31,10 +28,7 @@ def learn_settings(
     seed: int,
     part_size: int,
 ) -> Settings:
-    """Fit some data sets of the first part from many starts, and settle what a run needs.
-
-    Where a pilot has several modes each is followed in every data set; otherwise the median of
-    the pilots' modes is the start.
+    """Find a data set that suits all candidates, and settle what a run needs but the starts.
 
     Raises
     ------
@@ -45,10 +39,6 @@ def learn_settings(
     check_same_terms({p.model.name: p.terms for p in problems})
     terms = next((p.terms for p in problems if p.terms is not None), None)
     schema = learn_schema(part, template, terms)
-    places = _pilots(part, template, schema.shapes)
-    starts = {
-        problem.model.name: _starts(problem, part, places, shared, seed) for problem in problems
-    }
     columns = part.data_set(template)
     return Settings(
         depth=depth,
@@ -57,7 +47,7 @@ def learn_settings(
         schema=schema,
         shared=dict(shared),
         template={name: columns[name] for name in schema.shapes},
-        starts=starts,
+        starts={},
     )
 
 
@@ -71,38 +61,6 @@ def _first_that_suits(
         except DeclarationError as error:
             first_error = first_error or error
     raise first_error or DeclarationError("there is no data set to begin with.")
-
-
-def _pilots(part: Part, template: int, names: Mapping[str, object]) -> list[int]:
-    """The template and some data sets spread over the part that have its columns."""
-    like = [p for p in part.good() if p >= template and names.keys() <= part.data_set(p).keys()]
-    step = max(1, len(like) // PILOTS)
-    return list(dict.fromkeys([template, *like[::step]]))[:PILOTS]
-
-
-def _starts(
-    problem: Problem, part: Part, places: Sequence[int], shared: Mapping[str, np.ndarray], seed: int
-) -> np.ndarray:
-    """Starts (M, d): as many as the pilot with the most modes has."""
-    found = []
-    for place in places:
-        try:
-            pilot = Problem(problem.model, {**shared, **part.data_set(place)})
-        except DeclarationError:  # of another shape: left to the run to name
-            continue
-        if pilot.dim != problem.dim:
-            continue
-        peaks = find_modes(pilot, seed=seed).peaks if pilot.dim else ()
-        found.append([p.z for p in peaks if p.laplace > peaks[0].laplace - MATTERS])
-    most = max((len(modes) for modes in found), default=0)
-    if most == 0:
-        return np.array([problem.centre if problem.start is None else problem.start])
-    if most == 1:
-        starts = np.median([modes[0] for modes in found if modes], axis=0)[None]
-    else:
-        starts = np.array(next(modes for modes in found if len(modes) == most))
-    # the same digits whichever driver found the modes, so that a resumed run gives them again
-    return np.round(starts / problem.spread, ROUNDED) * problem.spread
 
 
 def _block(part_size: int, dim: int) -> int:

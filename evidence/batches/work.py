@@ -16,12 +16,13 @@ from evidence.batches.findings import TRUST_CODE, Finding
 from evidence.batches.modes import RowModes, find_row_modes, merge
 from evidence.batches.programs import Programs
 from evidence.batches.queue import Ends, build_queue, unpack_ends
+from evidence.mode import MATTERS
 from evidence.outcome import Outcome
 
 __all__ = ["RETRIES", "Bench", "Work", "filled"]
 
-FEW_DRAWS, FULL_DRAWS = 128, 1024
-RETRIES = 8  # starts in a data set that the template's starts did not serve
+FEW_DRAWS, FULL_DRAWS = 96, 1024
+RETRIES = 16  # starts in a data set that the template's starts did not serve
 
 
 @dataclasses.dataclass(frozen=True, kw_only=True)
@@ -80,6 +81,18 @@ class Work:
             judged = self._audit(modes, rows, position[rows])
             answers.put(places[rows], **judged._asdict())
 
+    def explore(self) -> list[np.ndarray]:
+        """Modes (m, d) that matter in each data set, from many starts."""
+        row = np.repeat(np.arange(self.n), RETRIES)
+        modes = find_row_modes(self._search(self._scattered(row), row), RETRIES, RETRIES)
+        matter = modes.laplace > modes.laplace[:, :1] - MATTERS
+        return [z[here] for z, here in zip(modes.z, matter, strict=True)]
+
+    def _scattered(self, row: np.ndarray) -> np.ndarray:
+        """Starts (n RETRIES, d) about the prior's centre of each data set, for rows in turn."""
+        offsets = np.tile(self.bench.offsets, (len(row) // RETRIES, 1))
+        return self.centre[row] + self.spread[row] * offsets
+
     def _answer_plainly(self, answers: Answers, places: np.ndarray) -> None:
         """A candidate with everything fixed: its evidence is its likelihood, exactly."""
         row = filled(np.arange(self.n), self.block)
@@ -107,8 +120,7 @@ class Work:
         if not len(lost):
             return modes
         row = np.repeat(lost, RETRIES)
-        offsets = np.tile(self.bench.offsets, (len(lost), 1))
-        ends = self._search(self.centre[row] + self.spread[row] * offsets, row)
+        ends = self._search(self._scattered(row), row)
         return merge(modes, lost, find_row_modes(ends, RETRIES, each))
 
     def _search(self, starts: np.ndarray, row: np.ndarray) -> Ends:
