@@ -67,10 +67,21 @@ def file_of(module: str) -> Path | None:
     return path / "__init__.py" if (path / "__init__.py").exists() else None
 
 
-def imported(source: str) -> set[str]:
+def without_types(tree: ast.Module) -> ast.Module:
+    """The tree less what stands under ``if TYPE_CHECKING``, which is never run."""
+
+    def for_types(node: ast.AST) -> bool:
+        return isinstance(node, ast.If) and ast.unparse(node.test) == "TYPE_CHECKING"
+
+    tree.body = [node for node in tree.body if not for_types(node)]
+    return tree
+
+
+def imported(source: str, *, types_too: bool = True) -> set[str]:
     """Modules of the package that a source imports anywhere, as dotted names."""
     found = set()
-    for node in ast.walk(ast.parse(source)):
+    tree = ast.parse(source)
+    for node in ast.walk(tree if types_too else without_types(tree)):
         if isinstance(node, ast.Import):
             found |= {alias.name for alias in node.names}
         elif isinstance(node, ast.ImportFrom):
@@ -128,7 +139,8 @@ def test_no_room_is_named_twice():
 def _inside(folder: Path) -> dict[str, set[str]]:
     graph = {}
     for file in folder.rglob("*.py"):
-        behind = {file_of(module) for module in imported(file.read_text())} - {None, file}
+        names = imported(file.read_text(), types_too=False)
+        behind = {file_of(module) for module in names} - {None, file}
         graph[str(file)] = {str(f) for f in behind if folder in f.parents}
     return graph
 
