@@ -27,8 +27,12 @@ NAMES = [
     "approximate",
     "audit",
     "distributions",
+    "evidence_function",
+    "fit_hyperparameters",
     "read_data",
     "read_study",
+    "stress_observations",
+    "stress_priors",
     "weigh",
     "weigh_many",
 ]
