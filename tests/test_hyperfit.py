@@ -115,7 +115,7 @@ def test_table_text_and_picture():
 
 def test_what_cannot_be_fitted_is_named():
     model, data = ridge()
-    with pytest.raises(ev.DeclarationError, match="'alhpa' is no .* Did you mean 'alpha'"):
+    with pytest.raises(ev.DeclarationError, match=r"'alhpa' is no .* Did you mean 'alpha'"):
         ev.fit_hyperparameters(model, data, over=["alhpa"])
     with pytest.raises(ev.DeclarationError, match="over must name what is fitted"):
         ev.fit_hyperparameters(model, data, over=[])

@@ -102,7 +102,7 @@ class Recomputed:
 
         Four points: the error goes with the fourth power of the distance.
         """
-        h = 0.05
+        h = 0.02
 
         def at(distance: float) -> float:
             moved = list(steps)

@@ -88,38 +88,39 @@ def test_pull_and_left_out_of_a_gaussian_mean_are_the_closed_forms():
     assert abs(pair.pull[outlier] + pair.left_out[outlier]) > 0.1  # two different questions
 
 
-def test_an_observation_that_carries_the_verdict_is_named():
-    x = np.linspace(-1.0, 1.0, 12)
-    y = 2.0 + 0.05 * np.sin(29.0 * x)
-    y[11] += 1.4
-    data = {"depth": x, "stems": y}
-    weighing = problems.weighed(
-        problems.flat_model(), problems.sloped_model(), data=data, depth="quick"
+def carried(ends, heights):
+    """Stems that do not depend on depth, and a few far out at which they do."""
+    near = np.linspace(-0.5, 0.5, 10)
+    x = np.concatenate([near, ends])
+    y = np.concatenate([2.0 + 0.3 * np.cos(7.0 * np.arange(10)), heights])
+    return stress_observations(
+        problems.weighed(
+            problems.flat_model(),
+            problems.sloped_model(),
+            data={"depth": x, "stems": y},
+            depth="quick",
+        )
     )
-    steady = stress_observations(problems.two())
-    carried = stress_observations(weighing)
-    told = " ".join(carried.warnings)
-    pair = carried.pairs[0]
-    assert pair.order[0] == 11
-    assert ("carries the lead" in told) == (pair.lead + pair.left_out[11] <= 0)
-    assert not any("carries" in text for text in steady.warnings)
 
 
-def two_carriers():
-    """A slope held up by its two ends."""
-    x = np.concatenate([np.zeros(10), [4.0, 4.2]])
-    y = np.concatenate([2.0 + 0.1 * np.cos(7.0 * np.arange(10)), [3.0, 3.1]])
-    return {"depth": x, "stems": y}
+def test_an_observation_that_carries_the_verdict_is_named():
+    result = carried([4.0], [4.2])
+    (pair,) = result.pairs
+    assert result.leader == "sloped"
+    assert pair.carrier == 10
+    assert pair.lead + pair.left_out[10] < 0 < pair.lead
+    assert result.warnings[0].startswith("without observation 10 alone flat would lead by ")
+    assert "it carries the lead of sloped" in result.summary
+    assert reeds().pairs[0].carrier is None
+    assert not any("carries" in text for text in reeds().warnings)
 
 
 def test_two_observations_that_carry_the_verdict_together():
-    weighing = problems.weighed(
-        problems.flat_model(), problems.sloped_model(), data=two_carriers(), depth="quick"
-    )
-    result = stress_observations(weighing)
-    assert result.leader == "sloped"
+    result = carried([4.0, 4.3], [3.6, 3.8])
     (pair,) = result.pairs
+    assert result.leader == "sloped"
     assert set(pair.two) == {10, 11}
+    assert pair.carrier is None
     assert pair.without_two < 0 < pair.lead
     assert "they carry the lead of sloped" in result.warnings[0]
     assert result.summary.startswith("Without observations 1")
@@ -150,9 +151,7 @@ def test_picture_along_the_data():
     assert axes.get_xlabel() == "depth"
     marks = np.concatenate([line.get_xdata() for line in axes.lines if line.get_marker() in "v^"])
     np.testing.assert_allclose(np.sort(marks), problems.DEPTH)
-    with pytest.raises(
-        ev.DeclarationError, match=r"'dept' is no column here.*Did you mean 'depth'"
-    ):
+    with pytest.raises(ev.DeclarationError, match=r"'dept' is no column.*Did you mean 'depth'"):
         result.plot(along="dept")
     with pytest.raises(ev.DeclarationError, match=r"'curved' is no rival here. There are: flat"):
         result.plot("curved")
