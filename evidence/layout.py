@@ -20,7 +20,7 @@ from evidence.distributions.base import Distribution
 from evidence.model import Model, as_prior, call_flexibly
 from evidence.tracing import reworded
 
-__all__ = ["Layout", "Named", "lay_out", "unpack"]
+__all__ = ["Layout", "Named", "lay_out", "prior_of", "unpack"]
 
 
 @jax.tree_util.register_pytree_node_class
@@ -110,7 +110,7 @@ class Layout:
         columns = Named(data, "column", self.model.name)
         with float64():
             for block in self.blocks:
-                prior = _prior(self.model, block.name, hyper, values, columns)
+                prior = prior_of(self.model, block.name, hyper, values, columns)
                 centre, spread = prior.centre_and_spread()
                 centre = np.broadcast_to(np.asarray(centre, np.float64), block.z_shape)
                 spread = np.broadcast_to(np.asarray(spread, np.float64), block.z_shape)
@@ -159,7 +159,7 @@ class Layout:
     def _support(self, name: str, hyper: Any, values: Named, columns: Named) -> Any:
         if self.model.bare:
             return hyper["supports"][name]
-        return _prior(self.model, name, hyper, values, columns).support
+        return prior_of(self.model, name, hyper, values, columns).support
 
     def _checked_value(self, block: Block, given: Any, support: Any) -> np.ndarray:
         try:
@@ -207,7 +207,7 @@ def lay_out(model: Model, hyper: Any, data: Any) -> Layout:
             if model.bare:
                 support, shape = hyper["supports"][name], np.shape(model.start[name])
             else:
-                prior = _prior(model, name, hyper, values, columns)
+                prior = prior_of(model, name, hyper, values, columns)
                 support, shape = prior.support, (*prior.batch_shape, *prior.event_shape)
             block = _block(name, tuple(shape), support, sum(len(b.labels) for b in blocks))
             blocks.append(block)
@@ -232,7 +232,7 @@ def unpack(layout: Layout, z: Any, hyper: Any, data: Any) -> tuple[dict[str, Any
     log_prior, log_jacobian = jnp.zeros(()), jnp.zeros(())
     for block in layout.blocks:
         piece = jnp.reshape(z[block.place], block.z_shape)
-        prior = None if model.bare else _prior(model, block.name, hyper, values, columns)
+        prior = None if model.bare else prior_of(model, block.name, hyper, values, columns)
         support = hyper["supports"][block.name] if prior is None else prior.support
         jacobian = jnp.sum(support.log_jacobian(piece))
         if prior is not None:
@@ -243,7 +243,14 @@ def unpack(layout: Layout, z: Any, hyper: Any, data: Any) -> tuple[dict[str, Any
     return {block.name: values[block.name] for block in layout.blocks}, log_prior, log_jacobian
 
 
-def _prior(model: Model, name: str, hyper: Any, values: Named, data: Named) -> Any:
+def prior_of(model: Model, name: str, hyper: Any, values: Named, data: Named) -> Any:
+    """The prior of a parameter, given the values of those before it.
+
+    Raises
+    ------
+    DeclarationError
+        A prior function that cannot be traced, or returns no distribution.
+    """
     declared = model.priors[name]
     if isinstance(declared, Distribution):
         return hyper["priors"][name]

@@ -31,6 +31,7 @@ ORDER = [
     "layout",
     "problem",
     "replicas",
+    "simulation",
     "newton",
     "mode",
     "curvature",
@@ -49,7 +50,9 @@ ORDER = [
     "weighing",
     "hyperfit",
     "stress",
+    "prediction",
     "batches",
+    "rehearsal",
     "cli",
     "__main__",
 ]
