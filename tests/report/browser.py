@@ -67,15 +67,17 @@ def open_page(driver, path, *, width=1000, dark=False):
     scheme = {"name": "prefers-color-scheme", "value": "dark" if dark else "light"}
     driver.execute_cdp_cmd("Emulation.setEmulatedMedia", {"features": [scheme]})
     driver.get(path.as_uri())
-    return driver.get_log("browser"), requests(driver)
+    return driver.get_log("browser"), requests(driver, path.as_uri())
 
 
-def requests(driver):
+def requests(driver, page):
+    """What a page asked for; a browser's own first tab may still be loading beside it."""
     events = [json.loads(entry["message"])["message"] for entry in driver.get_log("performance")]
     return [
         event["params"]["request"]["url"]
         for event in events
         if event["method"] == "Network.requestWillBeSent"
+        and event["params"]["documentURL"] == page
     ]
 
 
