@@ -25,7 +25,9 @@ class Sizes(click.ParamType):
 
     name = "sizes"
 
-    def convert(self, value: Any, param: Any, ctx: Any) -> tuple[int, ...]:
+    def convert(
+        self, value: Any, param: click.Parameter | None, ctx: click.Context | None
+    ) -> tuple[int, ...]:
         """Turn "20,40" into (20, 40)."""
         if isinstance(value, tuple):
             return value
@@ -34,7 +36,9 @@ class Sizes(click.ParamType):
         except ValueError:
             sizes = (0,)
         if min(sizes) < 1:
-            self.fail(f"sizes are whole numbers from 1 on, as in 20,40,80; got {value!r}.")
+            self.fail(
+                f"sizes are whole numbers from 1 on, as in 20,40,80; got {value!r}.", param, ctx
+            )
         return sizes
 
 

@@ -13,7 +13,19 @@ import numpy as np
 from evidence.batches.findings import TRUST_CODE
 from evidence.comparison import JOINT_ERRORS, SETTLED_LEAD
 
-__all__ = ["Bin", "SizeRun", "binomial_band", "calibrate", "size_for", "wilson"]
+__all__ = [
+    "LEADER",
+    "SETTLING",
+    "Bin",
+    "SizeRun",
+    "binomial_band",
+    "calibrate",
+    "size_for",
+    "wilson",
+]
+
+LEADER = "the leader"  # whose probability is meant where no candidate is named
+SETTLING = (0.8, 0.95)  # shares of cases for which a sample size is told
 
 EDGES = (0.0, 0.01, 0.05, 0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.7, 0.8, 0.9, 0.95, 0.99, 1.0)
 BAND = 0.95

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from evidence.complaints import DeclarationError, near_name, sentence
-from evidence.rehearsal.result import LEADER, SETTLING
+from evidence.rehearsal.counting import LEADER, SETTLING
 from evidence.report.figures.canvas import (
     BLUE,
     FAINT,

@@ -10,15 +10,21 @@ from typing import Any
 import numpy as np
 
 from evidence.complaints import DeclarationError, sentence
-from evidence.rehearsal.counting import Bin, SizeRun, calibrate, size_for, wilson
+from evidence.rehearsal.counting import (
+    LEADER,
+    SETTLING,
+    Bin,
+    SizeRun,
+    calibrate,
+    size_for,
+    wilson,
+)
 
 __all__ = ["TABLES", "FailedDraw", "Rehearsal"]
 
-SETTLING = (0.8, 0.95)
 RARE = 0.05  # chance, all bins together, below which probabilities are called off
 QUANTILES = {"q05": 0.05, "q25": 0.25, "median": 0.5, "q75": 0.75, "q95": 0.95}
 MISLEADING = 3.0  # nats: 2 log B of 6, "strong" of Kass & Raftery (1995)
-LEADER = "the leader"
 
 GROWTH = {
     "size": "number of observations in a data set",
@@ -69,7 +75,7 @@ TABLES = {"growth": GROWTH, "confusion": CONFUSION, "calibration": CALIBRATION,
           "log_bayes_factors": FACTORS}  # fmt: skip
 
 
-@dataclasses.dataclass(frozen=True, kw_only=True)
+@dataclasses.dataclass(frozen=True)
 class FailedDraw:
     """A simulation that could not be used: whose, at which size, which repeat, why, where."""
 
