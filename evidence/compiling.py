@@ -16,6 +16,7 @@ import logging
 import os
 import platform
 import threading
+from collections import OrderedDict
 from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
@@ -23,8 +24,9 @@ from typing import Any
 import jax
 import numpy as np
 
-__all__ = ["Program", "as_numpy", "compile_ahead", "float64", "on_device"]
+__all__ = ["Program", "Programs", "as_numpy", "compile_ahead", "float64", "on_device"]
 
+PROGRAMS_KEPT = 48  # of one model
 CACHE_VARIABLE = "EVIDENCE_COMPILE_CACHE"
 _LOCK = threading.RLock()
 _HASTY = {"xla_backend_optimization_level": 0, "xla_llvm_disable_expensive_passes": True}
@@ -90,6 +92,27 @@ class Program:
             # another compiler may not know the options
             self._hasty, self._jitted = False, jax.jit(self._function)
             return self._jitted(*arguments)
+
+
+class Programs:
+    """The compiled programs of one model, the most recently used ones kept."""
+
+    def __init__(self) -> None:
+        self._kept: OrderedDict[Any, Any] = OrderedDict()
+        self.fits: dict[Any, int] = {}
+
+    def get(self, key: Any, build: Callable[[], Any]) -> Any:
+        """Return the program kept under a key, building it where there is none."""
+        if key in self._kept:
+            self._kept.move_to_end(key)
+            return self._kept[key]
+        program = self._kept[key] = build()
+        while len(self._kept) > PROGRAMS_KEPT:
+            self._kept.popitem(last=False)
+        return program
+
+    def __len__(self) -> int:
+        return len(self._kept)
 
 
 def compile_ahead(function: Callable[..., Any], *arguments: Any) -> Any:

@@ -16,6 +16,8 @@ from evidence.outcome import Outcome
 from evidence.portrait import paint
 from evidence.posterior import Posterior, RecordedPosterior
 from evidence.problem import Problem
+from evidence.record import candidate_record
+from evidence.report.html import candidate_fragment
 
 __all__ = ["Approximation"]
 
@@ -211,6 +213,9 @@ class Approximation:
         if self.recorded is not None:
             return dict(self.recorded.get("units") or {})
         return {} if self.problem is None else dict(self.problem.model.units)
+
+    def _repr_html_(self) -> str:
+        return candidate_fragment(candidate_record(self))
 
     def __repr__(self) -> str:
         volume = self.laplace - self.log_posterior_at_mode

@@ -6,13 +6,13 @@ Only the declaration and its checks live here; :mod:`evidence.problem` joins it 
 from __future__ import annotations
 
 import inspect
-from collections import OrderedDict
 from collections.abc import Callable, Mapping
 from typing import Any
 
 import jax
 import numpy as np
 
+from evidence.compiling import Programs
 from evidence.complaints import DeclarationError, near_name, sentence
 from evidence.distributions import discrete, real
 from evidence.distributions.base import Distribution
@@ -20,10 +20,9 @@ from evidence.distributions.fields import float32_names
 from evidence.distributions.foreign import adapt
 from evidence.distributions.supports import Support
 from evidence.fingerprint import Reading, read_functions
+from evidence.report.html import model_fragment
 
 __all__ = ["Model", "as_prior", "call_flexibly"]
-
-PROGRAMS_KEPT = 48
 
 
 class Model:
@@ -163,6 +162,16 @@ class Model:
     def __setstate__(self, state: dict[str, Any]) -> None:
         self.__dict__.update(state, programs=Programs())
 
+    def _repr_html_(self) -> str:
+        rows = [
+            (name, "" if self.bare else _prior_text(self.priors[name]), *self._told(name))
+            for name in self.parameters
+        ]
+        return model_fragment(self.name, rows)
+
+    def _told(self, name: str) -> tuple[str, str]:
+        return self.units.get(name, ""), self.notes.get(name, "")
+
     def __repr__(self) -> str:
         if self.bare:
             shown = ", ".join(self.parameters)
@@ -171,27 +180,6 @@ class Model:
         if len(lines) > 10:
             lines = [*lines[:9], f"  and {len(lines) - 9} more"]
         return "\n".join([f"Model({self.name!r})", *lines])
-
-
-class Programs:
-    """The compiled programs of one model, the most recently used ones kept."""
-
-    def __init__(self) -> None:
-        self._kept: OrderedDict[Any, Any] = OrderedDict()
-        self.fits: dict[Any, int] = {}
-
-    def get(self, key: Any, build: Callable[[], Any]) -> Any:
-        """Return the program kept under a key, building it where there is none."""
-        if key in self._kept:
-            self._kept.move_to_end(key)
-            return self._kept[key]
-        program = self._kept[key] = build()
-        while len(self._kept) > PROGRAMS_KEPT:
-            self._kept.popitem(last=False)
-        return program
-
-    def __len__(self) -> int:
-        return len(self._kept)
 
 
 def as_prior(owner: str, name: str, prior: Any) -> Any:

@@ -1,20 +1,15 @@
-"""A result as a plain record, and back: what the report's forms take and what JSON keeps."""
+"""A result as a plain record: what the report's forms take and what JSON keeps."""
 
 from __future__ import annotations
 
 import platform
-from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
 
-from evidence.complaints import Caution
-from evidence.curvature import Curvature, Direction
-from evidence.estimate import Approximation
-from evidence.outcome import Outcome
-from evidence.posterior import RecordedPosterior
+from evidence.curvature import Curvature
 
-__all__ = ["candidate_record", "recorded_candidate", "versions"]
+__all__ = ["FIGURES", "candidate_record", "versions"]
 
 FIGURES = (
     "log_evidence",
@@ -26,7 +21,7 @@ FIGURES = (
 )
 
 
-def candidate_record(result: Approximation) -> dict[str, Any]:
+def candidate_record(result: Any) -> dict[str, Any]:
     """Everything about one candidate that does not depend on the others."""
     model = None if result.problem is None else result.problem.model
     return {
@@ -51,40 +46,6 @@ def candidate_record(result: Approximation) -> dict[str, Any]:
         "notes": {} if model is None else dict(model.notes),
         "units": {} if model is None else dict(model.units),
     }
-
-
-def recorded_candidate(record: Mapping[str, Any], *, depth: str, seed: int) -> Approximation:
-    """An Approximation from a candidate's record; it holds numbers and tables, no draws."""
-    number = {key: _open(record.get(key)) for key in (*FIGURES, "fit", "well_determined")}
-    modes = record.get("modes") or [{}]
-    return Approximation(
-        name=record["candidate"],
-        log_evidence=number["log_evidence"],
-        standard_error=number["standard_error"],
-        laplace=number["laplace"],
-        laplace_all_modes=np.nan,
-        second_order_term=number["second_order_term"],
-        cubic_part=np.nan,
-        quartic_part=np.nan,
-        mode={k: np.asarray(v, float) for k, v in (modes[0].get("mode") or {}).items()},
-        log_posterior_at_mode=number["log_posterior_at_mode"],
-        log_likelihood_at_mode=number["fit"],
-        bic=number["bic"],
-        curvature=_recorded_curvature(record.get("curvature") or {}, number["well_determined"]),
-        posterior=RecordedPosterior(record["posterior"]) if record["posterior"] else None,
-        modes=(),
-        audit=None,
-        trust=record["trust"],
-        warnings=tuple(Caution(w["sentence"], w.get("remedy", "")) for w in record["warnings"]),
-        status=Outcome[record["status"]],
-        dimension=int(record.get("dimension") or 0),
-        terms=record.get("terms"),
-        depth=depth,
-        seed=seed,
-        starts=int(record.get("starts") or 0),
-        seconds=_open(record.get("seconds")),
-        recorded=record,
-    )
 
 
 def versions() -> dict[str, str]:
@@ -127,27 +88,6 @@ def _curvature_record(curvature: Curvature | None) -> dict[str, Any]:
     }
 
 
-def _recorded_curvature(record: Mapping[str, Any], determined: float) -> Curvature | None:
-    if not record:
-        return None
-    directions = tuple(
-        Direction(
-            combination=x["combination"],
-            sd=_open(x["sd"]),
-            share_from_data=_open(x["share_from_data"]),
-        )
-        for x in record.get("directions", ())
-    )
-    return Curvature(
-        hessian=np.zeros((0, 0)),
-        scaled_condition=_open(record.get("scaled_condition")),
-        half_log_det=np.nan,
-        well_determined=determined,
-        directions=directions,
-        from_prior=(),
-    )
-
-
 def _prior_texts(model: Any) -> dict[str, str]:
     if model.bare:
         return {name: f"in the log posterior, on {model.supports[name]!r}" for name in model.start}
@@ -156,7 +96,3 @@ def _prior_texts(model: Any) -> dict[str, str]:
         is_function = not hasattr(prior, "log_prob")
         texts[name] = "a function of earlier parameters" if is_function else repr(prior)
     return texts
-
-
-def _open(value: Any) -> float:
-    return np.nan if value is None else float(value)

@@ -18,7 +18,8 @@ from evidence.complaints import near_name
 from evidence.estimate import Approximation
 from evidence.model import Model
 from evidence.problem import Problem
-from evidence.record import candidate_record, recorded_candidate, versions
+from evidence.record import candidate_record, versions
+from evidence.recorded import recorded_candidate
 from evidence.report.html import notebook_fragment
 from evidence.report.json_form import FORMAT, VERSION, numbers_only, read_record
 from evidence.report.text import short_text

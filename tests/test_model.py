@@ -10,9 +10,10 @@ import numpy as np
 import pytest
 
 import evidence as ev
+from evidence.compiling import Programs
 from evidence.distributions import HalfNormal, LogNormal, Normal, Poisson, positive, real
 from evidence.distributions import discrete as discrete_support
-from evidence.model import Programs, call_flexibly
+from evidence.model import call_flexibly
 
 PRIORS = {"mean": Normal(0.0, 2.0), "sd": HalfNormal(1.0)}
 

@@ -11,7 +11,8 @@ import pytest
 import evidence as ev
 from evidence.distributions import HalfNormal, LogNormal, Normal, positive
 from evidence.outcome import Outcome
-from evidence.record import candidate_record, recorded_candidate, versions
+from evidence.record import candidate_record, versions
+from evidence.recorded import recorded_candidate
 
 KEYS = {
     "candidate", "log_evidence", "standard_error", "laplace", "second_order_term", "bic",

@@ -21,8 +21,9 @@ from evidence.report.content import (
     weighing_page,
 )
 from evidence.report.markup import safe, table, warning_items
+from evidence.report.wording import short_name
 
-__all__ = ["candidate_fragment", "notebook_fragment"]
+__all__ = ["candidate_fragment", "model_fragment", "notebook_fragment"]
 
 _STYLE = """<style>
 .evidence-result { max-width: 100%; overflow-x: auto; overflow-wrap: anywhere; color: inherit; }
@@ -71,6 +72,13 @@ def candidate_fragment(candidate: Mapping[str, Any]) -> str:
             *(f"<p><small>{safe(line)}</small></p>" for line in page.curvature),
         ]
     )
+
+
+def model_fragment(name: str, rows: Iterable[Sequence[str]]) -> str:
+    """Return a declaration as an HTML fragment: each parameter with prior, unit and note."""
+    headings = ("parameter", "prior", "unit", "note")
+    heading = f"<p><strong>{safe(short_name(name))}</strong></p>"
+    return _fragment([heading, table("Parameters", headings, rows)])
 
 
 def _fragment(blocks: Iterable[str]) -> str:
