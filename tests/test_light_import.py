@@ -36,6 +36,8 @@ RUN = "from evidence.cli import main; main(prog_name='evidence')"
     [
         (["--help"], 0),
         (["weigh", "--help"], 0),
+        (["stress", "--help"], 0),
+        (["stress"], 2),
         (["weigh"], 2),
         (["weigh", "study.py", "--depth", "deep"], 2),
         (["weigh", "study.py", "--save", "result.xlsx"], 2),
