@@ -412,14 +412,18 @@ def test_weights_need_terms():
         "sum", {"m": Normal(0, 1)}, lambda p, d: jnp.sum(Normal(p["m"], 1.0).log_prob(d["y"]))
     )
     f = evidence_function(summed, {"y": np.zeros(3)})
-    with pytest.raises(ev.DeclarationError, match=r"weights need one log-likelihood term .* scalar"):
+    with pytest.raises(
+        ev.DeclarationError, match=r"weights need one log-likelihood term .* scalar"
+    ):
         f(weights=np.ones(3))
 
 
 def test_wrong_candidates_and_options_are_refused():
     with pytest.raises(ev.DeclarationError, match=r"needs a candidate made with evidence\.Model"):
         evidence_function("counts")
-    with pytest.raises(ev.DeclarationError, match=r"modes must be one of .* Did you mean 'leading'"):
+    with pytest.raises(
+        ev.DeclarationError, match=r"modes must be one of .* Did you mean 'leading'"
+    ):
         evidence_function(counts_model(), counts(), modes="leadin")
     endless = ev.Model.from_log_posterior("endless", lambda p: p["x"], {"x": 0.0})
     with pytest.raises(ArithmeticError, match="endless: the search ran off to infinity"):

@@ -23,6 +23,7 @@ FACTOR_LIMIT = 100.0  # beyond which a prior is not a neighbour of the declared 
 PLACES = ("mean", "location", "log_mean", "loc")
 BOUNDS = ("low", "high", "lower_bound", "upper_bound")
 POSITIVE = ("positive", "nonnegative")
+WORDS = {"a": "shape a", "b": "shape b", "df": "degrees of freedom"}
 
 
 @dataclasses.dataclass(frozen=True, kw_only=True)
@@ -164,7 +165,7 @@ def _of_field(model: Model, parameter: str, prior: Any, field: str, label: str) 
         factor = np.exp(2 * amount if matrix else amount)
         return _with(prior, {field: leaf + amount * shift if place else leaf * factor})
 
-    word = "sd (all together)" if matrix else label.replace("_", " ")
+    word = "sd (all together)" if matrix else WORDS.get(label, label.replace("_", " "))
     return Lever(
         candidate=model.name,
         parameter=parameter,

@@ -90,6 +90,7 @@ def test_labels_are_the_trades_words_with_units():
     assert (found["alpha"].label, found["alpha"].unit) == ("shape of the prior on x", "")
     assert (found["rate"].label, found["rate"].unit) == ("rate of the prior on x", "1/(g)")
     assert found["rate"].width == -1
+    assert levers_of(Beta(2.0, 3.0))[0]["a"].label == "shape a of the prior on x"
 
 
 def test_arrays_move_as_a_whole():
