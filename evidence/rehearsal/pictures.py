@@ -32,6 +32,7 @@ __all__ = ["PICTURES", "draw_rehearsal"]
 
 PICTURES = ("overview", "confusion", "calibration", "growth", "log_bayes_factors")
 MOST_ROWS = 24
+FEWEST = 5  # data sets from which a bin is drawn
 MOST_NAMES = 12  # candidates of which cells are numbered
 _COLORS = (BLUE, VERMILLION, GREEN, ORANGE, INK)
 _TICKS = (-1000, -100, -30, -10, -3, -1, 0, 1, 3, 10, 30, 100, 1000, 10000)
@@ -104,7 +105,8 @@ def _paper_to_blue() -> Any:
 
 def _draw_calibration(axes: Axes, found: Rehearsal) -> None:
     axes.plot([0.0, 1.0], [0.0, 1.0], color=FAINT, linewidth=0.8, zorder=1)
-    bins = found.bins[LEADER]
+    total = sum(b.count for b in found.bins[LEADER])
+    bins = [b for b in found.bins[LEADER] if b.count >= FEWEST] or found.bins[LEADER]
     label = "95 % band if they hold"
     for b in bins:
         low, high = b.band[0] / b.count, b.band[1] / b.count
@@ -124,8 +126,8 @@ def _draw_calibration(axes: Axes, found: Rehearsal) -> None:
     axes.set_ylim(least - 0.08, 1.05)
     axes.set_xlabel("posterior probability of the leader, mean of the bin")
     axes.set_ylabel("share of data sets\nthat it generated")
-    total = sum(b.count for b in bins)
-    axes.set_title(f"{total} data sets of all sizes", loc="left")
+    several = " of all sizes" if len(found.runs) > 1 else ""
+    axes.set_title(f"{total} data sets{several}", loc="left")
     axes.legend(loc="lower right")
 
 
