@@ -173,8 +173,8 @@ def unsaid(record: Record) -> tuple[str, ...]:
         failed = [c for c in _pictures(leader).get("checks") or [] if c.get("failed")]
         sentence = check_sentence(leader)
         found.append(
-            f"The leader may fit badly: {sentence} It is the most probable of the candidates given, "
-            "and none of them may be adequate."
+            f"The leader may fit badly: {sentence} It is the most probable of the candidates "
+            "given, and none of them may be adequate."
             if failed
             else f"The evidence compares candidates and approves of none. {sentence}"
         )

@@ -76,8 +76,7 @@ def requests(driver, page):
     return [
         event["params"]["request"]["url"]
         for event in events
-        if event["method"] == "Network.requestWillBeSent"
-        and event["params"]["documentURL"] == page
+        if event["method"] == "Network.requestWillBeSent" and event["params"]["documentURL"] == page
     ]
 
 
