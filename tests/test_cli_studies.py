@@ -12,6 +12,7 @@ from evidence.report.json_form import read_record, record_from_json
 
 ROOT = Path(__file__).resolve().parent.parent
 STUDIES = [p for p in sorted((ROOT / "models").glob("*.py")) if "def models(" in p.read_text()]
+QUICK = {"litter", "nests"}  # the others are weighed by the slow tests
 LITTER = ROOT / "models" / "litter.py"
 
 
@@ -19,7 +20,13 @@ def run(*arguments):
     return CliRunner().invoke(main, [str(a) for a in arguments], prog_name="evidence")
 
 
-@pytest.mark.parametrize("study", STUDIES, ids=lambda p: p.stem)
+@pytest.mark.parametrize(
+    "study",
+    [
+        pytest.param(p, marks=() if p.stem in QUICK else pytest.mark.slow, id=p.stem)
+        for p in STUDIES
+    ],
+)
 def test_a_study_from_the_file_to_the_saved_result(study, tmp_path):
     saved = [tmp_path / f"result{suffix}" for suffix in (".json", ".csv", ".md")]
     saves = [word for path in saved for word in ("--save", path)]

@@ -120,6 +120,7 @@ def test_a_mode_held_constant_would_be_wrong_here():
     assert abs(wrong / right - 1.0) > 1e-3
 
 
+@pytest.mark.slow
 def test_second_derivatives_agree_with_differences_of_recomputed_evidences():
     f = counts_function()
 
@@ -224,6 +225,7 @@ def g_closed_form(g):
     return value, slope, curved
 
 
+@pytest.mark.slow
 def test_g_prior_closed_form_as_a_function_of_g():
     f = evidence_function(g_model(), g_data())
 

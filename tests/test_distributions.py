@@ -137,6 +137,7 @@ def test_special_functions_against_high_precision():
     np.testing.assert_allclose(jax.jit(log_binomial)(n, k), ways, rtol=1e-13, atol=2e-14)
 
 
+@pytest.mark.slow
 def test_second_derivatives_of_log_beta_where_both_are_equal():
     # d2 log B = trigamma - trigamma(sum) on the diagonal; minimum/maximum would mix the two
     for a in (2.0, 25.0):
@@ -273,6 +274,7 @@ def hyper_derivatives(tree, leaves, x):
 SMOOTH = [case for case in (*SCALAR, *DISCRETE) if case.ours != Bernoulli(1e-18)]
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("case", SMOOTH, ids=str)
 def test_hessian_in_the_hyperparameters_equals_differences(case):
     x = float(np.sort(case.points)[len(case.points) // 2])

@@ -56,6 +56,7 @@ def everything(ours, x, z):
     return ours.log_prob(x), ours.log_prob_z(z), jacobian
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("place", range(10))
 def test_shapes_supports_and_density(place):
     theirs, batch, event, support = several()[place]

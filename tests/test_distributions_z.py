@@ -136,6 +136,7 @@ def draw(distribution, key):
     return distribution.sample(key, (40_000,))
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("case", [*SCALAR, *DISCRETE], ids=str)
 def test_samples_follow_the_distribution(case):
     draws = np.asarray(draw(case.ours, jax.random.key(5)))

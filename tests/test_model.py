@@ -159,7 +159,7 @@ def test_texts_of_a_model():
 
 
 def test_programs_forget_the_least_used(monkeypatch):
-    monkeypatch.setattr("evidence.model.PROGRAMS_KEPT", 3)
+    monkeypatch.setattr("evidence.compiling.PROGRAMS_KEPT", 3)
     programs, built = Programs(), []
     for key in (1, 2, 3, 1, 4, 1, 2):
         programs.get(key, lambda key=key: built.append(key) or key)

@@ -392,6 +392,7 @@ def study(tmp_path):
     return str(path)
 
 
+@pytest.mark.slow
 def test_the_command_rehearses_a_study_and_goes_on_from_its_store(study, tmp_path):
     pytest.importorskip("pyarrow")
     out, store = tmp_path / "r.json", tmp_path / "store"

@@ -111,6 +111,7 @@ def test_log_likelihood_gives_one_finite_term_a_row(study, model):
     assert np.isfinite(terms).all()
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(("study", "model"), shelf_models())
 def test_simulated_responses_scatter_around_the_predicted(study, model):
     response = RESPONSES[study.path.stem]

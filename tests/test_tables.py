@@ -60,7 +60,7 @@ def test_parquet_mistakes_are_named(tmp_path):
 def test_parquet_without_pyarrow_says_what_to_install(tmp_path, monkeypatch):
     path = write(tmp_path, "no", "gauge.parquet")
     monkeypatch.setitem(sys.modules, "pyarrow", None)
-    with pytest.raises(ImportError, match=r"pip install 'laplace-model-evidence\[parquet\]'"):
+    with pytest.raises(ImportError, match=r"pip install 'laplace-model-evidence\[batch\]'"):
         read_data(path)
 
 

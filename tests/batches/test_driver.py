@@ -68,6 +68,7 @@ def test_the_right_candidate_is_settled_for(quick):
     assert len(repr(quick).splitlines()) <= 12
 
 
+@pytest.mark.slow
 def test_one_thread_two_threads_and_small_parts_give_the_same_digits(quick):
     again = ev.weigh_many(problems.both(), problems.stacked(60), shared={"t": problems.TIMES},
                           threads=2, part_size=17)  # fmt: skip

@@ -60,6 +60,7 @@ def test_row_wise_terms_are_filled_up_and_masked():
     _assert_equal_to_single_fits(_row_wise, [5, 9, 12, 31, 7])
 
 
+@pytest.mark.slow
 @pytest.mark.filterwarnings("ignore::evidence.EvidenceWarning")
 @pytest.mark.parametrize(
     "function", [_centred, _cumulative, _autoregression, _distances, _reads_length]

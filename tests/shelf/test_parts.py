@@ -36,6 +36,7 @@ def test_one_finite_term_a_row(part, strict_ranks):
     assert np.isfinite(terms).all()
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("part", INDEPENDENT, ids=repr)
 def test_draws_scatter_around_the_prediction(part):
     draws = part.draws
@@ -63,6 +64,7 @@ def test_draws_of_a_process_have_its_covariance(part):
 QUICK = {"two exponentials", "hill", "bend", "harmonics", "rough"}
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(
     "part",
     [
