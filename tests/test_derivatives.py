@@ -153,6 +153,7 @@ def test_composes_with_vmap_and_jit():
     np.testing.assert_allclose(found, [recomputed(sd=sd) for sd in sds], atol=1e-9)
 
 
+@pytest.mark.slow
 def test_weights_leave_out_and_their_derivatives_are_pulls():
     f, data = counts_function(), counts()
     weights = np.ones(ROWS)

@@ -85,6 +85,7 @@ def simulated(models):
     return found
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("size", SIZES)
 def test_every_evidence_is_the_exact_one(rehearsal, simulated, size):
     exact = np.stack([exact_log_evidences(y) for y in simulated[size]])

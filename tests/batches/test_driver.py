@@ -86,6 +86,7 @@ def test_another_seed_moves_only_the_errors(quick):
     assert not np.array_equal(quick.table().standard_error, again.table().standard_error)
 
 
+@pytest.mark.slow
 def test_a_list_of_dicts_gives_what_stacked_arrays_give(quick):
     again = ev.weigh_many(problems.both(), iter(problems.listed(60)))
     np.testing.assert_allclose(quick.table().laplace, again.table().laplace, atol=1e-9)

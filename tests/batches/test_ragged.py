@@ -83,6 +83,7 @@ def test_a_scalar_log_likelihood_is_refused_where_lengths_differ():
     assert np.isfinite(alike.log_evidence).all()
 
 
+@pytest.mark.slow
 def test_a_prior_that_reads_the_data_is_not_filled_up():
     priors = {"level": lambda p, data: Normal(jnp.mean(data["y"]), jnp.std(data["y"]))}
     model = ev.Model("own prior", priors, lambda p, d: Normal(p["level"], 1.0).log_prob(d["y"]))
@@ -93,6 +94,7 @@ def test_a_prior_that_reads_the_data_is_not_filled_up():
         assert abs(batch.laplace[k] - single.laplace) < 1e-8
 
 
+@pytest.mark.slow
 @pytest.mark.filterwarnings("ignore::evidence.EvidenceWarning")
 def test_quick_audit_of_filled_up_data_sets_is_that_of_single_fits():
     data = problems.listed(12, lengths=(20, 14, 9))

@@ -197,6 +197,7 @@ def test_stomach_cancer():
     assert_covered(found, known["log_integral"])
 
 
+@pytest.mark.slow
 def test_a_function_that_loses_its_digits_is_refused():
     """Uncut, all log-gammas cancel to zero above K = e^50: as computed, the density rises by 500.
 

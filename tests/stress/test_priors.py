@@ -105,6 +105,7 @@ def test_a_tipping_point_put_back_into_the_models_gives_equal_values(reeds):
     assert reeds.joint.confirmed
 
 
+@pytest.mark.slow
 def test_derivatives_are_those_of_the_evidence_function(reeds):
     for name, result in [("sloped", problems.two()["sloped"])]:
         f = ev.evidence_function(result.problem.model, problems.SLOPED, second_order=True)

@@ -132,6 +132,7 @@ def test_counts_at_other_depths(depth, close, covered):
     assert {r.name for r in rows if r.silent} <= UNREACHABLE, show(rows)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("name", ["emax_weak_d3", "eight_noncentred_d10", "sinusoid_strong_d3"])
 def test_quadrature_is_reproduced(name):
     with jax.enable_x64(True):
