@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import dataclasses
 import functools
+import warnings
 from collections.abc import Mapping, Sequence
 from typing import Any
 
@@ -217,7 +218,10 @@ class Posterior:
 
     def to_arviz(self, number: int = 4000, *, seed: int | None = None) -> Any:
         """Draws for arviz: InferenceData below arviz 1, DataTree from 1 on; one chain."""
-        import arviz
+        with warnings.catch_warnings():
+            # arviz 0.23 announces its next version once a day, when it is imported
+            warnings.simplefilter("ignore", FutureWarning)
+            import arviz
 
         chain = {k: v[None] for k, v in self.draws(number, seed=seed).items()}
         # by its version: from 1 on the old name's lookup warns

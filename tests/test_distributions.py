@@ -217,6 +217,7 @@ OUTSIDE = [
 ]
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(("distribution", "x"), OUTSIDE, ids=repr)
 def test_outside_the_support_is_minus_infinity_without_slope(distribution, x):
     value, slope, bend, hyper = derivatives(with_arrays(distribution), x)

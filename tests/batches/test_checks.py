@@ -75,6 +75,7 @@ def test_an_unbounded_density_gives_no_number():
     assert batch.log_evidence.isna().all()
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("d", [1, 3])
 def test_mixture_density_in_the_program_is_that_of_the_rungs(d):
     """The log weights of draws from a posterior that is one broad Gaussian add up to its mass."""

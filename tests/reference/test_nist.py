@@ -77,7 +77,6 @@ EXCHANGES = {
 SIGNS = {"Gauss1": ((4,), (7,)), "Gauss2": ((4,), (7,)), "Eckerle4": ((0, 1),)}
 # residual sum of squares 1e-25: the certified residual sd, 9e-14, is at the rounding level of y,
 # so that in float64 the Newton decrement cannot settle; see the two tests at the end
-DEAR = {"Gauss1", "Gauss2", "Thurber", "Lanczos2", "Lanczos3", "MGH17"}
 ROUNDING_LEVEL = "Lanczos1"
 
 
@@ -122,11 +121,11 @@ def as_certified(name: str, b: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
 @pytest.mark.parametrize(
     ("name", "which"),
     [
-        # the second start is the nearer one; the first is the test, for some it takes many seconds
+        # the second start is the nearer one; the first is the test
         pytest.param(
             name,
             which,
-            marks=pytest.mark.slow if which and name in DEAR else (),
+            marks=pytest.mark.slow if which else (),
             id=f"{name}-start{which + 1}",
         )
         for name in sorted(set(SETS) - {ROUNDING_LEVEL})

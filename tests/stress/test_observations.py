@@ -52,6 +52,7 @@ def test_re_weighted_values_agree_with_weighings_without_the_observation():
         assert np.all(shape < 0.7)
 
 
+@pytest.mark.slow
 def test_pulls_are_the_exact_derivatives_in_the_weights():
     for name, result in problems.two().items():
         f = ev.evidence_function(result.problem.model, problems.SLOPED)
