@@ -2,17 +2,15 @@
 
 from __future__ import annotations
 
-import csv
-import io
 import math
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
-from evidence.complaints import DeclarationError, near_name, sentence
 from evidence.report.json_form import record_to_json
 from evidence.report.markdown import escape_markdown
-from evidence.report.wording import short_name, visible
+from evidence.report.rows import known_suffix, rows_to_csv
+from evidence.report.wording import short_name
 from evidence.report.writing import write_text
 
 __all__ = ["FORMS", "check_suffix", "save"]
@@ -26,17 +24,11 @@ TITLES = {
     "failures": "Simulations left out",
 }
 FAILURES_SHOWN = 20
-_FORMULA_SIGNS = ("=", "+", "-", "@")  # a spreadsheet would run a text that begins so
 
 
 def to_csv(record: Mapping[str, Any]) -> str:
     """The main table at full precision; an open number is an empty field."""
-    text = io.StringIO()
-    writer = csv.writer(text, lineterminator="\n")
-    columns = list(record["columns"]["growth"])
-    writer.writerow(columns)
-    writer.writerows([_field(row[name]) for name in columns] for row in record["growth"])
-    return text.getvalue()
+    return rows_to_csv(list(record["columns"]["growth"]), record["growth"])
 
 
 def to_markdown(record: Mapping[str, Any]) -> str:
@@ -71,16 +63,8 @@ def check_suffix(path: str | Path) -> str:
     DeclarationError
         No form has it.
     """
-    suffix = Path(path).suffix.lower()
-    if suffix in FORMS:
-        return suffix
-    raise DeclarationError(
-        sentence(
-            f"a rehearsal is saved by its suffix, one of {', '.join(FORMS)}",
-            short_name(repr(str(path)), 400),
-        )
-        + near_name(suffix, FORMS)
-    )
+    expected = f"a rehearsal is saved by its suffix, one of {', '.join(FORMS)}"
+    return known_suffix(path, expected, tuple(FORMS))
 
 
 def save(record: Mapping[str, Any], path: str | Path) -> None:
@@ -109,12 +93,3 @@ def _cell(value: Any) -> str:
     if isinstance(value, float):
         return f"{value:.4g}" if math.isfinite(value) else "-"
     return escape_markdown(short_name(value)) if isinstance(value, str) else str(value)
-
-
-def _field(value: Any) -> str:
-    if isinstance(value, str):
-        word = visible(value)
-        return f"'{word}" if word.startswith(_FORMULA_SIGNS) else word
-    if isinstance(value, float):
-        return repr(value) if math.isfinite(value) else ""
-    return str(value)

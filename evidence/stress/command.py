@@ -7,10 +7,11 @@ from typing import Any
 
 from evidence.complaints import DeclarationError, sentence
 from evidence.report.json_form import record_to_json
+from evidence.report.rows import rows_to_csv
 from evidence.report.writing import check_writable, write_text
 from evidence.stress.observations import stress_observations
 from evidence.stress.priors import stress_priors
-from evidence.stress.saving import check_suffix, rows_to_csv
+from evidence.stress.saving import check_suffix
 from evidence.weighing import Weighing
 
 __all__ = ["PARTS", "Stress", "check_paths", "save_stress", "stress_parts"]
@@ -100,4 +101,5 @@ def save_stress(stress: Stress, paths: Iterable[str]) -> None:
             write_text(path, stress.to_json())
         else:
             (only,) = stress.parts.values()
-            write_text(path, rows_to_csv(only.to_dict()))
+            record = only.to_dict()
+            write_text(path, rows_to_csv(list(record["columns"]), record["rows"]))
